@@ -1,0 +1,2 @@
+-- Every judgement, oldest first.
+select * from runs order by run_id
