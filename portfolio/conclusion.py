@@ -39,7 +39,9 @@ def conclude(rows: pd.DataFrame, registry: pd.DataFrame, window: Window, setting
 
 
 def _conclude_stability(out: pd.DataFrame, registry: pd.DataFrame, window: Window, settings: Judgement) -> None:
-    found = stability.Evidence(**{name: out[f"stability.{name}"].to_numpy() for name in STABILITY_FIELDS}, **_no_extremes())
+    found = stability.Evidence(
+        **{name: out[f"stability.{name}"].to_numpy() for name in STABILITY_FIELDS}, **_no_extremes()
+    )
     q = discoveries.adjusted(found.p)
     verdict, note = stability.verdict(
         found,

@@ -63,7 +63,9 @@ def judge(
     concluded = conclude(first, registry, window, settings)
 
     layered = (concluded["stability_note"] == "layers").to_numpy()
-    redraw = np.flatnonzero((layered != first["layers_drawn"].to_numpy()) & (concluded["stability"] == STABLE).to_numpy())
+    redraw = np.flatnonzero(
+        (layered != first["layers_drawn"].to_numpy()) & (concluded["stability"] == STABLE).to_numpy()
+    )
     if len(redraw):
         again = _shard(reader, registry, window, stretch_from, settings, redraw, layered[redraw])
         concluded.loc[redraw, ["signals", "expected_signals"]] = again.rows[["signals", "expected_signals"]].to_numpy()
@@ -128,7 +130,11 @@ class FrameReader:
         member[rows] = True
         some = self._values.only(member[ragged.owners(self._values.start)])
         return Values(
-            np.concatenate((some.start[:-1][member], some.start[-1:])), some.time, some.subgroup, some.stream, some.value
+            np.concatenate((some.start[:-1][member], some.start[-1:])),
+            some.time,
+            some.subgroup,
+            some.stream,
+            some.value,
         )
 
 

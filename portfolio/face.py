@@ -54,7 +54,9 @@ def judge(
 
     missing = [name for name in ("characteristic", "taken_at", "value") if name not in measurements]
     if missing:
-        raise ValueError(f"measurements lack the column(s) {', '.join(missing)}; they have {', '.join(measurements.columns)}")
+        raise ValueError(
+            f"measurements lack the column(s) {', '.join(missing)}; they have {', '.join(measurements.columns)}"
+        )
     taken = pd.to_datetime(measurements["taken_at"], utc=True).dt.tz_localize(None).astype("datetime64[us]")
     values = measurements.assign(taken_at=taken)
     values = values[values["taken_at"].notna() & values["value"].notna()]

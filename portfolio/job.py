@@ -83,7 +83,9 @@ class RunReport:
         return self.pull.needs_a_person
 
 
-def pull(plan: Plan, registry: Registry, *, progress: Progress | None = None, now: datetime | None = None) -> PullReport:
+def pull(
+    plan: Plan, registry: Registry, *, progress: Progress | None = None, now: datetime | None = None
+) -> PullReport:
     """Bring new measurements of every source into the store."""
     moment = _utc(now)
     with writing(plan) as store:
@@ -181,8 +183,24 @@ def explain(plan: Plan, characteristic: str) -> Explanation:
         )
         if row.empty:
             names = store.frame("judgement/results_of_run", run_id=int(run["run_id"]))["characteristic"].tolist()
-            raise UsageError(f"no characteristic {characteristic!r} in the newest judgement.{_nearest(characteristic, names)}")
+            raise UsageError(
+                f"no characteristic {characteristic!r} in the newest judgement.{_nearest(characteristic, names)}"
+            )
     return wording.explanation(row.to_dict("records")[0], plan)
+
+
+def export(plan: Plan, folder: Path) -> list[Path]:
+    """The newest judgement, its ranking and the history of the index as CSV, Parquet and JSON."""
+    from portfolio import export as formats
+    from portfolio.publishing import wording
+
+    with reading(plan) as store:
+        run_id = int(newest(store, plan)["run_id"])
+        judgement = store.frame("judgement/results_of_run", run_id=run_id)
+        ranking = store.frame("judgement/ranking_of_run", run_id=run_id)
+        history = store.frame("history/index_history", run_id=run_id)
+    judgement["reasons"] = [wording.reasons(row) for row in judgement.to_dict("records")]
+    return formats.write(folder, {"judgement": judgement, "ranking": ranking, "history": history})
 
 
 def rejected(plan: Plan) -> pd.DataFrame:
@@ -229,7 +247,12 @@ def status(plan: Plan) -> dict[str, object]:
         "last_published": None if last is None else _text(last["published_at"]),
         "newest_issue": None if last is None else (last["folder"] if isinstance(last["folder"], str) else None),
         "sources": [
-            {"source": row.source, "status": row.status, "pulled_at": _text(row.pulled_at), "message": row.message or ""}
+            {
+                "source": row.source,
+                "status": row.status,
+                "pulled_at": _text(row.pulled_at),
+                "message": row.message or "",
+            }
             for row in pulls.itertuples()
         ],
     }
@@ -265,7 +288,9 @@ def _save(
         ]
     )
     results = decided.results.assign(run_id=run_id)
-    evidence = measured.evidence.append_column("run_id", pa.array(np.full(len(measured.evidence), run_id, dtype=np.int32)))
+    evidence = measured.evidence.append_column(
+        "run_id", pa.array(np.full(len(measured.evidence), run_id, dtype=np.int32))
+    )
     with store.transaction():
         store.insert("runs", run)
         store.insert("results", results[[c for c in store.columns("results") if c in results]])

@@ -160,7 +160,14 @@ def measure(
     )
     rows["all_outside"] = (rows["measurements"] > 0) & (outside == rows["measurements"])
     table = evidence.table(
-        registry["characteristic"].to_numpy(), stretch.value, stretch.start, groups, series, drawn, flagged, recorded.step
+        registry["characteristic"].to_numpy(),
+        stretch.value,
+        stretch.start,
+        groups,
+        series,
+        drawn,
+        flagged,
+        recorded.step,
     )
     return Measured(rows=rows, evidence=table)
 

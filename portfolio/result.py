@@ -45,5 +45,14 @@ CENTERING_CODES = (
     "one_sided", "natural_bound", "economic_aim", "coupled", "streams_differ", "sorted", "already_centred",
     "not_adjustable", "unstable", "not_judged", "capable_now",
 )  # fmt: skip
-INSTABILITY_KINDS = ("step", "several steps", "drift", "wandering", "cycle", "alternation", "spread", "isolated extremes")
+INSTABILITY_KINDS = (
+    "step",
+    "several steps",
+    "drift",
+    "wandering",
+    "cycle",
+    "alternation",
+    "spread",
+    "isolated extremes",
+)
 STABILITY_NOTES = ("layers", "negligible", "autocorrelated", "short")

@@ -62,4 +62,3 @@ def recording(ordered: Floats, start: Ints, declared: Floats) -> Recording:
         first, at = np.unique(gap_of[candidates], return_index=True)
         step[first] = gap[candidates][at]
     return Recording(distinct=distinct, step=np.where(declared > 0, declared, step))
-
