@@ -15,6 +15,7 @@ Each message says where, what, and what to do, in one line.
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import Literal
 
 DONE, NEEDS_A_PERSON, WRONG_USE, BUSY, FAILED = 0, 1, 2, 3, 4
 """Exit codes of every command (see the contract in DEVELOPERS.md)."""
@@ -27,6 +28,7 @@ class Problem:
     place: str
     what: str
     remedy: str
+    severity: Literal["error", "warning"] = "error"
 
     def __str__(self) -> str:
         return f"{self.place}: {self.what}. {self.remedy}"

@@ -1,6 +1,6 @@
 """plan.toml as a checked model: every setting of the program, its default and the reason for it, once.
 
-Paths in a plan are relative to the plan file. `Plan.read` raises `PlanError` with every problem at once.
+Paths in a plan are relative to the plan file. `plan_file.read` finds every problem of a file at once.
 """
 
 from __future__ import annotations
@@ -130,6 +130,13 @@ class Plan(_Section):
     limits: Limits = Limits()
     report: Report = Report()
     path: Path = Field(default=Path("plan.toml"), exclude=True)
+
+    @classmethod
+    def read(cls, path: Path) -> Plan:
+        """Read and check a plan file; `PlanError` lists every problem with its place and remedy."""
+        from portfolio import plan_file
+
+        return plan_file.read(Path(path))
 
     @property
     def folder(self) -> Path:

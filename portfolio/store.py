@@ -130,7 +130,9 @@ class Store:
 
     def columns(self, table: str) -> list[str]:
         """Column names of a table, in order."""
-        return [row[0] for row in self.connection.execute("select column_name from (describe " + table + ")").fetchall()]
+        return [
+            row[0] for row in self.connection.execute("select column_name from (describe " + table + ")").fetchall()
+        ]
 
     # Writing ------------------------------------------------------------------------------------------------------
 
@@ -203,7 +205,9 @@ class Store:
         if present == newest:
             return
         if self.read_only:
-            raise StoreError(f"{self.path} has schema {present}, this program needs {newest}. Run `portfolio pull` once.")
+            raise StoreError(
+                f"{self.path} has schema {present}, this program needs {newest}. Run `portfolio pull` once."
+            )
         for number in range(present + 1, newest + 1):
             with self.transaction():
                 if number == 1:
@@ -232,7 +236,9 @@ class Store:
         try:
             state = json.loads(path.read_text(encoding="utf-8"))
         except ValueError as error:
-            raise StoreError(f"{path} is not readable ({error}). Restore a backup, or delete it if you trust the store.") from error
+            raise StoreError(
+                f"{path} is not readable ({error}). Restore a backup, or delete it if you trust the store."
+            ) from error
         known = self._knows()
         behind = [name for name in ("newest_load", "newest_run") if known[name] < int(state.get(name, 0))]
         if behind:
@@ -300,7 +306,9 @@ def _told(path: Path, error: duckdb.Error, during: str = "") -> StoreError | Sto
     if "Could not set lock" in text or "Conflicting lock" in text:
         return StoreBusyError(f"{path} is open in another program ({text}). Close it and try again.")
     if "No space left" in text:
-        return StoreError(f"{path}: the disk is full. What was stored before is safe; make room and run again. ({text})")
+        return StoreError(
+            f"{path}: the disk is full. What was stored before is safe; make room and run again. ({text})"
+        )
     place = f"{path}, {during}" if during else str(path)
     return StoreError(f"{place}: {text}")
 
