@@ -119,6 +119,6 @@ class Weekly:
             return store.frame(query, run_id=int(job.newest(store, self.plan)["run_id"]))
 
 
-def open(plan: str | PathLike[str]) -> Weekly:  # noqa: A001 - the contract's name
+def open(plan: str | PathLike[str]) -> Weekly:
     """The stored judgements of a plan file."""
     return Weekly(Plan.read(Path(plan)))

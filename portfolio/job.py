@@ -9,7 +9,7 @@ from __future__ import annotations
 import hashlib
 import time
 from collections.abc import Iterator
-from contextlib import contextmanager
+from contextlib import AbstractContextManager, contextmanager, nullcontext
 from dataclasses import dataclass
 from datetime import UTC, datetime, timedelta
 from pathlib import Path
@@ -28,7 +28,8 @@ from portfolio.locks import hold
 from portfolio.plan import Plan
 from portfolio.registry import Registry
 from portfolio.result import CELLS
-from portfolio.store import Store
+from portfolio.store import Store, backup
+from portfolio.store import restore as restore_file
 from portfolio.store_reader import StoreReader
 from portfolio.terminal import Progress
 from portfolio.version import __version__
@@ -167,9 +168,13 @@ def run(
     progress: Progress | None = None,
 ) -> RunReport:
     """The weekly job: pull, judge, publish."""
-    pulled = pull(plan, registry, progress=progress)
-    judged = judge(plan, registry, as_of=as_of, slot=slot, progress=progress)
-    return RunReport(pulled, judged, publish(plan, progress=progress))
+    with _stage(progress, "pull"):
+        pulled = pull(plan, registry, progress=progress)
+    with _stage(progress, "judge"):
+        judged = judge(plan, registry, as_of=as_of, slot=slot, progress=progress)
+    with _stage(progress, "publish"):
+        published = publish(plan, progress=progress)
+    return RunReport(pulled, judged, published)
 
 
 def explain(plan: Plan, characteristic: str) -> Explanation:
@@ -184,7 +189,7 @@ def explain(plan: Plan, characteristic: str) -> Explanation:
         if row.empty:
             names = store.frame("judgement/results_of_run", run_id=int(run["run_id"]))["characteristic"].tolist()
             raise UsageError(
-                f"no characteristic {characteristic!r} in the newest judgement.{_nearest(characteristic, names)}"
+                f"no characteristic {characteristic!r} in the newest judgement.{nearest(characteristic, names)}"
             )
     return wording.explanation(row.to_dict("records")[0], plan)
 
@@ -231,6 +236,20 @@ def changes(plan: Plan) -> pd.DataFrame:
         return store.frame("history/changes")
 
 
+def back_up(plan: Plan, file: Path) -> None:
+    """A verified copy of the store."""
+    if not plan.store_path.exists():
+        raise StoreError(f"{plan.store_path} does not exist yet: there is nothing to copy.")
+    with hold(plan.store_path):
+        backup(plan.store_path, file)
+
+
+def restore(plan: Plan, file: Path) -> None:
+    """Put a copy in the place of the store."""
+    with hold(plan.store_path):
+        restore_file(file, plan.store_path)
+
+
 def status(plan: Plan) -> dict[str, object]:
     """Last run, store size and what the last pull said of each source."""
     with reading(plan) as store:
@@ -238,7 +257,10 @@ def status(plan: Plan) -> dict[str, object]:
         pulls = store.frame("history/last_pulls")
         size = store.size()
     last = runs.iloc[-1] if len(runs) else None
+    published = runs[runs["published_at"].notna() & runs["slot"].notna()]
     return {
+        **_service(plan),
+        "last_slot": str(published["slot"].iloc[-1]) if len(published) else None,
         "store": str(plan.store_path),
         "store_bytes": size,
         "judgements": len(runs),
@@ -256,6 +278,22 @@ def status(plan: Plan) -> dict[str, object]:
             for row in pulls.itertuples()
         ],
     }
+
+
+def _service(plan: Plan) -> dict[str, object]:
+    """Next times by the plan, and what the service last said of itself."""
+    from portfolio import schedule, slots
+
+    now, zone = _utc(None), plan.portfolio.timezone
+    health = schedule.read_health(plan)
+    beat = health.get("beat")
+    alive = beat is not None and now - datetime.fromisoformat(str(beat)) < timedelta(seconds=4 * schedule.BEAT_SECONDS)
+    upcoming = {
+        f"next_{name}": None if moment is None else moment.isoformat()
+        for name, cron in (("pull", plan.schedule.pull), ("publish", plan.schedule.publish))
+        for moment in (slots.following(cron, zone, now),)
+    }
+    return {"service": "running" if alive else "not running", "service_last_code": health.get("last_code"), **upcoming}
 
 
 def _save(
@@ -322,6 +360,7 @@ def _record_registry(store: Store, registry: Registry, now: datetime) -> int:
 
 
 def newest(store: Store, plan: Plan) -> dict[str, object]:
+    """The newest judgement; `UsageError` when there is none."""
     runs = store.frame("judgement/newest_run")
     if runs.empty:
         raise UsageError(f"{plan.store_path.name} holds no judgement yet. Run: portfolio run {plan.path}")
@@ -330,6 +369,7 @@ def newest(store: Store, plan: Plan) -> dict[str, object]:
 
 @contextmanager
 def writing(plan: Plan) -> Iterator[Store]:
+    """The store, locked and open for writing."""
     plan.store_path.parent.mkdir(parents=True, exist_ok=True)
     with hold(plan.store_path), _open(plan, read_only=False) as store:
         yield store
@@ -337,6 +377,7 @@ def writing(plan: Plan) -> Iterator[Store]:
 
 @contextmanager
 def reading(plan: Plan) -> Iterator[Store]:
+    """The store, locked and open for reading."""
     if not plan.store_path.exists():
         raise StoreError(f"{plan.store_path} does not exist yet. Run: portfolio run {plan.path}")
     with hold(plan.store_path), _open(plan, read_only=True) as store:
@@ -351,6 +392,10 @@ def _open(plan: Plan, *, read_only: bool) -> Store:
         threads=plan.limits.threads,
         temporary_folder=None if plan.limits.temporary_folder is None else plan.folder / plan.limits.temporary_folder,
     )
+
+
+def _stage(progress: Progress | None, name: str) -> AbstractContextManager[None]:
+    return nullcontext() if progress is None else progress.stage(name)
 
 
 def _counted(progress: Progress | None) -> engine.Progress | None:
@@ -381,7 +426,8 @@ def _text(moment: object) -> str | None:
     return None if pd.isna(stamp) else stamp.isoformat() + "Z"
 
 
-def _nearest(name: str, names: list[str]) -> str:
+def nearest(name: str, names: list[str]) -> str:
+    """A hint for a name that is not known: the nearest ones."""
     from difflib import get_close_matches
 
     near = get_close_matches(name, names, n=3, cutoff=0.5)

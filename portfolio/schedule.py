@@ -221,6 +221,12 @@ def health_path(plan: Plan) -> Path:
     return plan.store_path.with_name(plan.store_path.name + ".health.json")
 
 
+def read_health(plan: Plan) -> dict[str, Any]:
+    """What the service last said of itself; empty when it never ran here."""
+    path = health_path(plan)
+    return dict(json.loads(path.read_text(encoding="utf-8"))) if path.exists() else {}
+
+
 def say(event: str, **facts: object) -> None:
     """One JSON object a line on stderr."""
     line = {"time": datetime.now(UTC).isoformat(timespec="seconds"), "event": event, **facts}
