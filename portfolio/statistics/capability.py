@@ -156,9 +156,7 @@ def plugin_ppm(mean: Floats, sigma: Floats, lower: Floats, upper: Floats) -> Flo
         return 1e6 * (ndtr((lower - mean) / s) + ndtr((mean - upper) / s))
 
 
-def expected_ppm(
-    mean: Floats, sigma: Floats, n_mean: Floats, df: Floats, lower: Floats, upper: Floats
-) -> Floats:
+def expected_ppm(mean: Floats, sigma: Floats, n_mean: Floats, df: Floats, lower: Floats, upper: Floats) -> Floats:
     """Posterior mean of the parts per million outside: Student t with scale s sqrt(1 + 1/n). Source: Guttman (1970)."""
     with np.errstate(invalid="ignore", divide="ignore"):
         s = np.where(sigma > 0, sigma, np.nan) * np.sqrt(1 + 1 / n_mean)

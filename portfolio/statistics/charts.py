@@ -91,9 +91,7 @@ def control_limits(series: Series, subgroups: Subgroups, layers: Bools) -> Chart
     by_range, by_s = series.range / d2(series.size), series.sd / c4(size)
     sigma_within = np.where(ranged, _average(by_range, of), _average(by_s, of))
 
-    standard_error = np.where(
-        (single | three_way)[owner], sigma_moving[owner], sigma_within[owner] / np.sqrt(size)
-    )
+    standard_error = np.where((single | three_way)[owner], sigma_moving[owner], sigma_within[owner] / np.sqrt(size))
     if single.any():
         grand = np.where(single, ragged.means(series.mean, of), grand)
     lower = grand[owner] - WIDTH * standard_error
@@ -116,7 +114,9 @@ def control_limits(series: Series, subgroups: Subgroups, layers: Bools) -> Chart
         spread_lower=np.maximum(0.0, spread_centre - WIDTH * sd_factor * sigma),
         spread_upper=spread_centre + WIDTH * sd_factor * sigma,
         between_centre=np.where(three_way, mean_moving, np.nan) if count else np.empty(0),
-        between_upper=np.where(three_way, mean_moving * (1 + WIDTH * d3_two / d2_two), np.nan) if count else np.empty(0),
+        between_upper=np.where(three_way, mean_moving * (1 + WIDTH * d3_two / d2_two), np.nan)
+        if count
+        else np.empty(0),
     )
 
 

@@ -80,9 +80,7 @@ def isolated_extremes(values: Floats, start: Ints, subgroup_start: Ints, of: Int
     return Extremes(p=p, of=group_owner[flagged], index=flagged)
 
 
-def _mapped(
-    values: Floats, owner: Ints, skew: Floats, middle: Floats, below: Floats, above: Floats
-) -> Floats:
+def _mapped(values: Floats, owner: Ints, skew: Floats, middle: Floats, below: Floats, above: Floats) -> Floats:
     """Values mapped so that a shifted lognormal of this skewness becomes normal with unit scale."""
     sign = np.where(skew >= 0, 1.0, -1.0)
     size = np.abs(skew)

@@ -22,20 +22,25 @@ PARAMETERS = {STEP: 3, STEPS: 5, DRIFT: 1, WANDERING: 1, CYCLE: 3}
 
 @dataclass(frozen=True)
 class Kinds:
-    """`kind` (K,) '' where a series was not asked for; `first`, `last`: first positions after the cuts, -1 if none."""
+    """`kind` (K,) '' where a series was not asked for; `group`: location, spread or isolated extremes.
+
+    `main`: first position after the largest change, `other`: after the second one (two steps only), -1 if none.
+    """
 
     kind: np.ndarray  # type: ignore[type-arg]
-    first: Ints
-    last: Ints
+    main: Ints
+    other: Ints
     group: np.ndarray  # type: ignore[type-arg]
+    rhythm: Floats  # share of the variance of the scores that a cycle or an alternation explains, else NaN
 
 
 def name(parts: Parts, p_isolated: Floats, of: Ints, asked: Bools) -> Kinds:
     """Kinds of the series marked in `asked` (K,)."""
     count = len(of) - 1
     kind = np.full(count, "", dtype=object)
-    first = np.full(count, -1, dtype=np.int64)
-    last = first.copy()
+    main = np.full(count, -1, dtype=np.int64)
+    other = main.copy()
+    rhythm = np.full(count, np.nan)
     stacked = np.stack([parts.location(), parts.p_spread, p_isolated])
     smallest = np.argmin(np.where(np.isnan(stacked), 2.0, stacked), axis=0)
     group = np.array(["location", SPREAD, ISOLATED], dtype=object)[smallest]
@@ -45,15 +50,15 @@ def name(parts: Parts, p_isolated: Floats, of: Ints, asked: Bools) -> Kinds:
         chosen = rows[asked[rows] & (group[rows] == "location")]
         if len(chosen):
             y = parts.scores[of[chosen][:, None] + np.arange(m)]
-            kind[chosen], first[chosen], last[chosen] = _location_kind(y)
+            kind[chosen], main[chosen], other[chosen], rhythm[chosen] = _location_kind(y)
     kind[asked & (group == SPREAD)] = SPREAD
     kind[asked & (group == ISOLATED)] = ISOLATED
     spread = asked & (group == SPREAD)
-    first[spread] = last[spread] = parts.spread_at[spread]
-    return Kinds(kind, first, last, group)
+    main[spread] = parts.spread_at[spread]
+    return Kinds(kind, main, other, group, rhythm)
 
 
-def _location_kind(y: Floats) -> tuple[np.ndarray, Ints, Ints]:  # type: ignore[type-arg]
+def _location_kind(y: Floats) -> tuple[np.ndarray, Ints, Ints, Floats]:  # type: ignore[type-arg]
     m = y.shape[1]
     y = y - y.mean(axis=1, keepdims=True)
     total = (y * y).sum(axis=1)
@@ -63,13 +68,14 @@ def _location_kind(y: Floats) -> tuple[np.ndarray, Ints, Ints]:  # type: ignore[
     slope = (y @ t) / (t @ t)
     serial = lag_one(y)
     share = cycle_statistic(y)[0]
+    gain = _cycle_gain(y) if np.isfinite(share).all() else np.zeros(len(y))
     left = np.stack(
         [
             total - one,
             total - one - two,
             total - slope**2 * (t @ t),
             total * (1 - serial**2),
-            total - _cycle_gain(y) if np.isfinite(share).all() else total,
+            total - gain,
         ]
     )
     penalty = np.log(m) * np.array([PARAMETERS[k] for k in (STEP, STEPS, DRIFT, WANDERING, CYCLE)])
@@ -77,9 +83,11 @@ def _location_kind(y: Floats) -> tuple[np.ndarray, Ints, Ints]:  # type: ignore[
     best = np.argmin(bic, axis=0)
     kind = np.array([STEP, STEPS, DRIFT, WANDERING, CYCLE], dtype=object)[best]
     kind[(kind == WANDERING) & (serial < 0)] = ALTERNATION
-    first = np.where(kind == STEP, at, np.where(kind == STEPS, np.minimum(at, also), -1))
-    last = np.where(kind == STEP, at, np.where(kind == STEPS, np.maximum(at, also), -1))
-    return kind, first, last
+    main = np.where((kind == STEP) | (kind == STEPS), at, -1)
+    other = np.where(kind == STEPS, also, -1)
+    with np.errstate(invalid="ignore", divide="ignore"):
+        rhythm = np.select([kind == CYCLE, kind == ALTERNATION], [gain / total, serial**2], default=np.nan)
+    return kind, main, other, rhythm
 
 
 def _best_cut(y: Floats) -> tuple[Floats, Ints]:

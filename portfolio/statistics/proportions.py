@@ -30,7 +30,9 @@ def wilson(count: ArrayLike, n: ArrayLike, *, confidence: float = 0.95) -> tuple
         middle = (count + z2 / 2) / (n + z2)
         half = np.sqrt(z2) / (n + z2) * np.sqrt(count * (n - count) / n + z2 / 4)
     low, high = np.clip(middle - half, 0, 1), np.clip(middle + half, 0, 1)
-    return np.where(n > 0, np.where(count == 0, 0.0, low), np.nan), np.where(n > 0, np.where(count == n, 1.0, high), np.nan)
+    return np.where(n > 0, np.where(count == 0, 0.0, low), np.nan), np.where(
+        n > 0, np.where(count == n, 1.0, high), np.nan
+    )
 
 
 def _upper(count: Floats, n: Floats, tail: float) -> Floats:

@@ -36,7 +36,7 @@ Words = NDArray[Any]
 class Evidence:
     """What a verdict needs of each characteristic; (K,) arrays, NaN or -1 where it does not apply.
 
-    `change`, `settled`: flat index of the first subgroup after the last change / of a settled last stretch.
+    `change`, `settled`: flat index of the first subgroup after the largest change / of a settled last stretch.
     `change_size` in the unit of the characteristic, `change_sigma` in within-process sigmas, `period` in subgroups.
     `extreme_of`, `extreme_index`: flat arrays of the isolated extremes (characteristic, flat subgroup).
     """
@@ -124,7 +124,8 @@ def assess(
         p_step=_only(found.p_step, judgeable), p_serial=_only(found.p_serial, judgeable),
         p_cycle=_only(found.p_cycle, judgeable), p_spread=_only(found.p_spread, judgeable),
         p_isolated=_only(extremes.p, judgeable), p=_only(p, judgeable),
-        between_p=spread_of_values.between_p, movement_share=_movement_share(series, of, spread_of_values.total),
+        between_p=spread_of_values.between_p,
+        movement_share=_movement_share(series, of, spread_of_values.total, named.rhythm),
         serial=found.serial, phi=phi, residual_p=residual_p, wear_p=wear_p,
         group=named.group, kind=named.kind, change=change, change_size=size, change_sigma=sigma, period=period,
         spread_ratio=_spread_ratio(series, of, named, single),
@@ -201,7 +202,9 @@ def _spread(values: Floats, start: Ints, subgroups: Subgroups, series: Series) -
     with np.errstate(divide="ignore", invalid="ignore"):
         moving = ranges / ragged.sums(there, of) / 1.128379167  # d2 of two values: 2 / sqrt(pi)
         within = np.where(series.individuals, moving, np.sqrt(msw))
-    return _Spreads(total, within, np.where(testable, between, 0.0), np.where(testable & ~series.individuals, p, np.nan))
+    return _Spreads(
+        total, within, np.where(testable, between, 0.0), np.where(testable & ~series.individuals, p, np.nan)
+    )
 
 
 def _why_not(
@@ -213,9 +216,7 @@ def _why_not(
     inner_low, inner_high = ragged.extremes(values[inner], ragged.taken(start, inner))
     coarse = ~(inner_low < inner_high)  # at most the two ends and one value between them
     few = np.where(single, n < minimum_values, m < minimum_subgroups)
-    return np.select(
-        [few, low == high, coarse], ["too_few", "constant", "coarse"], default=""
-    ).astype(object)
+    return np.select([few, low == high, coarse], ["too_few", "constant", "coarse"], default="").astype(object)
 
 
 def _comparable(series: Series, of: Ints, spreads: _Spreads) -> tuple[Floats, Floats]:
@@ -245,28 +246,34 @@ def _location_p(x: Floats, of: Ints) -> Floats:
     return combined(found.p_step, found.p_serial, found.p_cycle, found.p_spread)
 
 
-def _movement_share(series: Series, of: Ints, total: Floats) -> Floats:
-    """Share of the variance of all values that slow movement of the location explains."""
+def _movement_share(series: Series, of: Ints, total: Floats, rhythm: Floats) -> Floats:
+    """Share of the variance of all values that the movement of the location explains.
+
+    Slow movement by the mean square successive difference; a cycle or an alternation, which that measure does not see,
+    by what it explains of the subgroup means.
+    """
     m = np.diff(of)
     variance = ragged.standard_deviations(series.mean, of) ** 2
     step = np.diff(series.mean, prepend=np.nan) ** 2
     step[of[:-1][m > 0]] = 0.0
     with np.errstate(divide="ignore", invalid="ignore"):
         successive = ragged.sums(step, of) / (m - 1)
-        return np.maximum(0.0, variance - successive / 2) / total
+        slow = np.maximum(0.0, variance - successive / 2) / total
+        return np.where(np.isnan(rhythm), slow, rhythm * variance / total)
 
 
 def _change(series: Series, of: Ints, named: kinds.Kinds, within: Floats) -> tuple[Ints, Floats, Floats]:
-    """Flat index of the first subgroup after the last change; size of the movement in units and in sigmas."""
+    """Flat index of the first subgroup after the largest change; size of the movement in units and in sigmas."""
     m = np.diff(of)
-    change = np.where(named.last >= 0, of[:-1] + named.last, -1).astype(np.int64)
+    change = np.where(named.main >= 0, of[:-1] + named.main, -1).astype(np.int64)
     size = np.full(len(m), np.nan)
     owner = np.repeat(np.arange(len(m)), m)
     position = np.arange(of[-1]) - of[:-1][owner]
     stepped = (named.kind == kinds.STEP) | (named.kind == kinds.STEPS)
-    begin = np.where(named.kind == kinds.STEPS, named.first, 0)
-    after = stepped[owner] & (position >= named.last[owner])
-    before = stepped[owner] & (position < named.last[owner]) & (position >= begin[owner])
+    begin = np.where((named.other >= 0) & (named.other < named.main), named.other, 0)
+    end = np.where(named.other > named.main, named.other, m)
+    after = stepped[owner] & (position >= named.main[owner]) & (position < end[owner])
+    before = stepped[owner] & (position < named.main[owner]) & (position >= begin[owner])
     new = ragged.means(series.mean[after], ragged.taken(of, after))
     old = ragged.means(series.mean[before], ragged.taken(of, before))
     size[stepped] = (new - old)[stepped]
@@ -288,27 +295,26 @@ def _spread_ratio(series: Series, of: Ints, named: kinds.Kinds, single: Bools) -
     squares = np.where(single[owner], step**2 / 2, series.sd**2)
     there = ~np.isnan(squares) & (named.kind == kinds.SPREAD)[owner]
     ratio = []
-    for side in (position >= named.last[owner], position < named.last[owner]):
+    for side in (position >= named.main[owner], position < named.main[owner]):
         ratio.append(ragged.means(squares[there & side], ragged.taken(of, there & side)))
     with np.errstate(divide="ignore", invalid="ignore"):
         return np.sqrt(ratio[0] / ratio[1])
 
 
-def _settled(
-    location: Floats, spread: Floats, of: Ints, single: Bools, named: kinds.Kinds, asked: Bools
-) -> Ints:
+def _settled(location: Floats, spread: Floats, of: Ints, single: Bools, named: kinds.Kinds, asked: Bools) -> Ints:
     """Flat index of the stretch after the last change if it is long enough and passes the test itself, else -1."""
     m = np.diff(of)
-    candidate = asked & (named.last >= 0) & (m - named.last >= SETTLED_SUBGROUPS)
+    last = np.maximum(named.main, named.other)
+    candidate = asked & (last >= 0) & (m - last >= SETTLED_SUBGROUPS)
     out = np.full(len(m), -1, dtype=np.int64)
     if not candidate.any():
         return out
     owner = np.repeat(np.arange(len(m)), m)
     position = np.arange(of[-1]) - of[:-1][owner]
-    keep = candidate[owner] & (position >= named.last[owner])
+    keep = candidate[owner] & (position >= last[owner])
     rest: Parts = parts(location[keep], spread[keep], ragged.taken(of, keep), single)
     calm = combined(rest.p_step, rest.p_serial, rest.p_cycle, rest.p_spread) >= RESIDUAL_P
-    return np.where(candidate & calm, of[:-1] + named.last, out)
+    return np.where(candidate & calm, of[:-1] + last, out)
 
 
 def _only(p: Floats, judgeable: Bools) -> Floats:

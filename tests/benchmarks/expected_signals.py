@@ -18,9 +18,7 @@ def simulate(m: int, n: int, between: float, count: int, rng: np.random.Generato
     x = (rng.standard_normal((count, m, n)) + between * rng.standard_normal((count, m, 1))).ravel()
     start = np.arange(count + 1) * m * n
     time = np.tile(np.arange(m * n), count)
-    groups = form(
-        time, np.full(len(x), -1), start, np.full(count, n if n > 1 else 1), np.full(count, np.nan)
-    )
+    groups = form(time, np.full(len(x), -1), start, np.full(count, n if n > 1 else 1), np.full(count, np.nan))
     series = summarise(x, time, groups)
     drawn = charts.control_limits(series, groups, np.full(count, between > 0))
     return float(charts.signals(drawn, series, groups).count.mean())
