@@ -1,0 +1,107 @@
+"""How numbers, units and dates are written. Digits follow what is known: a value is shown to a tenth of its sigma."""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass
+from typing import Any
+from zoneinfo import ZoneInfo
+
+import pandas as pd
+
+THIN = "\u202f"  # narrow space that does not break: between number and unit, in groups of three
+MINUS = "\u2212"
+SUPERSCRIPT = str.maketrans("-0123456789", "⁻⁰¹²³⁴⁵⁶⁷⁸⁹")
+
+
+def missing(value: Any) -> bool:
+    """Whether a cell is empty (None, NaN, NaT, NA or an empty text)."""
+    if value is None or isinstance(value, str):
+        return not value
+    return bool(pd.isna(value))
+
+
+@dataclass(frozen=True)
+class Numbers:
+    """Formats with the plan's decimal sign and time zone."""
+
+    decimal: str = "."
+    zone: str = "UTC"
+
+    def fixed(self, value: Any, digits: int) -> str:
+        """A number with so many decimals and a true minus sign; '–' when it is missing."""
+        if missing(value) or not math.isfinite(value):
+            return "–"
+        text = f"{value:,.{digits}f}"
+        if float(f"{value:.{digits}f}") == 0:
+            text = text.lstrip("-")
+        return text.replace(",", THIN).replace(".", self.decimal).replace("-", MINUS)
+
+    def index(self, value: Any) -> str:
+        """A capability index: two decimals."""
+        return self.fixed(value, 2)
+
+    def value(self, value: Any, scale: Any = None, *, sign: bool = False) -> str:
+        """A measured quantity, to about a tenth of `scale` (its sigma); three significant digits without one."""
+        if missing(value) or not math.isfinite(value):
+            return "–"
+        size = abs(value)
+        if size and (size >= 1e7 or size < 1e-5):
+            exponent = math.floor(math.log10(size))
+            return f"{self.fixed(value / 10**exponent, 2)}{THIN}·{THIN}10{str(exponent).translate(SUPERSCRIPT)}"
+        ground = scale if not missing(scale) and scale > 0 else (size / 100 or 1.0)
+        digits = min(8, max(0, math.ceil(-math.log10(ground)) + 1))
+        text = self.fixed(value, digits)
+        return f"+{text}" if sign and value > 0 else text
+
+    def quantity(self, value: Any, unit: Any, scale: Any = None, *, sign: bool = False) -> str:
+        """A measured quantity with its unit."""
+        text = self.value(value, scale, sign=sign)
+        return text if missing(unit) or text == "–" else f"{text}{THIN}{unit}"
+
+    def count(self, value: Any) -> str:
+        """A whole number in groups of three."""
+        return "–" if missing(value) else f"{round(value):,}".replace(",", THIN)
+
+    def rough(self, value: Any) -> str:
+        """A count that is known only roughly: two significant digits."""
+        if missing(value):
+            return "–"
+        if value < 1:
+            return "under 1"
+        digits = max(0, math.floor(math.log10(value)) - 1)
+        return self.count(round(value / 10**digits) * 10**digits)
+
+    def ppm(self, value: Any) -> str:
+        """Parts per million: below 1 it is the tail of an assumed shape and only called small."""
+        if missing(value):
+            return "–"
+        return "under 1" if value < 1 else self.rough(value)
+
+    def percent(self, value: Any, digits: int = 0) -> str:
+        """A share as a percentage."""
+        return "–" if missing(value) else f"{self.fixed(100 * value, digits)}{THIN}%"
+
+    def chance(self, value: Any) -> str:
+        """A probability as whole percent; never 0 or 100."""
+        if missing(value):
+            return "–"
+        if value > 0.99:
+            return f"over 99{THIN}%"
+        return f"under 1{THIN}%" if value < 0.01 else self.percent(value)
+
+    def money(self, value: Any, currency: Any) -> str:
+        """An amount, two significant digits, with its currency."""
+        text = self.rough(value)
+        return text if missing(currency) or text == "–" else f"{text}{THIN}{currency}"
+
+    def date(self, moment: Any) -> str:
+        """The day in the plan's zone, ISO 8601."""
+        return "–" if missing(moment) else f"{self._local(moment):%Y-%m-%d}"
+
+    def time(self, moment: Any) -> str:
+        """Day and minute in the plan's zone."""
+        return "–" if missing(moment) else f"{self._local(moment):%Y-%m-%d %H:%M}"
+
+    def _local(self, moment: Any) -> pd.Timestamp:
+        return pd.Timestamp(moment).tz_localize("UTC").tz_convert(ZoneInfo(self.zone))
