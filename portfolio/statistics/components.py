@@ -1,8 +1,9 @@
-"""Variance components of a stretch: within subgroups, between them, between streams; and how much they are known.
+"""Variance components of a stretch: within subgroups, between them, between streams; and how well they are known.
 
 The total sigma that a process is judged by adds all of them. Degrees of freedom and the effective number of values
 for the mean say how well: when periods differ, 1,000 values of 25 periods are worth little more than 25
-(capability study, section 2.4). Streams are fixed (the same cavities run next week); subgroups are random.
+(capability study, section 2.4). Streams are fixed (the same cavities run next week, in the same shares); subgroups
+are random.
 """
 
 from __future__ import annotations
@@ -14,6 +15,7 @@ from scipy import stats
 
 from portfolio.statistics import ragged
 from portfolio.statistics.ragged import Bools, Floats, Ints
+from portfolio.statistics.streams import Streams, split_by_stream
 from portfolio.statistics.subgroups import Subgroups
 
 D2_OF_TWO = 2 / np.sqrt(np.pi)
@@ -21,10 +23,14 @@ D2_OF_TWO = 2 / np.sqrt(np.pi)
 
 @dataclass(frozen=True)
 class Components:
-    """All (K,). Sigmas in the unit of the characteristic; NaN where they cannot be estimated.
+    """All (K,). Sigmas in the unit of the characteristic; NaN where they cannot be estimated or do not apply.
 
-    `n_mean` effective number of values for the mean, `df` effective degrees of freedom of `sigma_total`;
-    `between_p`, `stream_p` p-values of the F tests; `streams` number of streams (0 where none are named).
+    `sigma_overall` plain standard deviation; `sigma_within` inside subgroups with the streams in it (individuals:
+    mean moving range / d2); `sigma_total` what the process is judged by, its square being the sum of those of
+    `sigma_between` (NaN for individuals), `sigma_stream` (NaN without streams) and `sigma_error` (what is left).
+    `n_mean` effective number of values for the mean (sigma_total / sqrt(n_mean) is its standard error), `df` effective
+    degrees of freedom of `sigma_total`; `between_p`, `stream_p` p-values of the F tests; `streams` number of named
+    streams (0 where none are named).
     """
 
     n: Ints
@@ -33,6 +39,7 @@ class Components:
     sigma_within: Floats
     sigma_between: Floats
     sigma_stream: Floats
+    sigma_error: Floats
     sigma_total: Floats
     n_mean: Floats
     df: Floats
@@ -48,150 +55,181 @@ def components(
 
     Parameters
     ----------
-    values : (N,), sorted as `subgroups` cuts them; `start` (K + 1,)
+    values : (N,) unit of the characteristic, in the order in which `subgroups` cuts them
+    start : (K + 1,) starts of the characteristics
     stream : (N,) stream of each value, -1 where none is named
-    serial : (K,) autocorrelation of individuals whose neighbours lean on each other, NaN where it does not apply
+    serial : (K,) lag-1 autocorrelation of the subgroup means (individuals: of the values) of characteristics whose
+        neighbours lean on each other, NaN where it does not apply
 
     Source
     ------
-    One-way analysis of variance with unequal sizes; Satterthwaite (1946) for the degrees of freedom; streams by the
-    fitting of constants (Henderson 1953); individuals with autocorrelation: capability study, section 1.
+    One-way analysis of variance with unequal sizes, Satterthwaite (1946) for the degrees of freedom; streams by
+    fitting constants (Henderson 1953, method 3 with fixed streams; equal to method 1 in balanced data, and unbiased
+    where streams are spread unevenly over subgroups); autocorrelation: capability study, section 1, carried over from
+    values to subgroup means. All formulas beside `_estimate`.
     """
     n = np.diff(start)
     mean = ragged.means(values, start)
     overall = ragged.standard_deviations(values, start)
-    streamed = _by_stream(values, start, stream, mean)
-    # With several streams the layers are looked for in what is left when each stream's own mean is taken out.
-    left = values - streamed.effect
-    layers = _layers(left, start, subgroups, streamed.lost_df)
-    several = layers.several
+    left = values - np.repeat(mean, n)  # sums of squares keep their digits (StRD)
+    leaning = np.full(len(n), np.nan) if serial is None else np.where(np.abs(serial) < 1, serial, np.nan)
 
-    total = np.where(several, layers.between + layers.within, overall**2)
-    df = np.where(several, layers.df, n - 1.0)
-    n_mean = np.where(several, layers.n_mean, n.astype(np.float64))
-    between, within = layers.between, layers.within
+    design = _design(left, start, subgroups)
+    alike = _estimate(design, design.squares, design.between, np.ones(len(n)), leaning)
+    found, between_p, stream_p = alike, alike.between_p, np.full(len(n), np.nan)
 
-    split = streamed.count > 1
-    rest = np.where(several, layers.between + layers.within, streamed.within)
-    total = np.where(split, rest + streamed.variance, total)
-    df = np.where(split & ~several, n - streamed.count, df)
+    split = split_by_stream(left, start, subgroups, stream)
+    if split.used.any():
+        differing = _estimate(design, *_without_streams(design, split), leaning, split)
+        # Streams whose means differ by no more than their noise are one stream.
+        found = _choose(split.used & (differing.stream > 0), differing, alike)
+        between_p = np.where(split.used, differing.between_p, between_p)
+        stream_p = np.where(split.used, differing.stream_p, stream_p)
 
-    # No variation between subgroups: the plain standard deviation knows as much and more degrees of freedom.
-    plain = several & (layers.between == 0) & ~split
-    total, df, n_mean = np.where(plain, overall**2, total), np.where(plain, n - 1.0, df), np.where(plain, n, n_mean)
-
-    moving = _moving_sigma(values, start)
-    within = np.where(several, within, moving**2)
-    if serial is not None:
-        leaning = np.isfinite(serial) & ~several
-        with np.errstate(divide="ignore", invalid="ignore"):
-            eff = n * (1 - serial) / (1 + serial)
-            nu = n * (1 - serial**2) / (1 + serial**2) - 1
-            wider = overall**2 * (n - 1) / (n - n / eff)
-        total, df = np.where(leaning, wider, total), np.where(leaning, nu, df)
-        n_mean = np.where(leaning, eff, n_mean)
+    within = np.where(design.layered, design.inside / np.maximum(design.n - design.b, 1), _moving(values, start) ** 2)
     enough = n > 1
     return Components(
         n=n,
         mean=mean,
         sigma_overall=overall,
-        sigma_within=np.sqrt(within),
-        sigma_between=np.where(several, np.sqrt(between), np.nan),
-        sigma_stream=np.where(split, np.sqrt(streamed.variance), np.nan),
-        sigma_total=np.where(enough, np.sqrt(total), np.nan),
-        n_mean=np.where(enough, n_mean, np.nan),
-        df=np.where(enough, df, np.nan),
-        between_p=layers.p,
-        stream_p=streamed.p,
-        streams=streamed.count,
+        sigma_within=np.sqrt(np.where(enough, within, np.nan)),
+        sigma_between=np.sqrt(np.where(design.layered, found.between, np.nan)),
+        sigma_stream=np.sqrt(np.where(split.used, found.stream, np.nan)),
+        sigma_error=np.sqrt(np.where(enough, found.error, np.nan)),
+        sigma_total=np.sqrt(np.where(enough, found.between + found.stream + found.error, np.nan)),
+        n_mean=np.where(enough, found.n_mean, np.nan),
+        df=np.where(enough, found.df, np.nan),
+        between_p=between_p,
+        stream_p=stream_p,
+        streams=split.named,
     )
 
 
 @dataclass(frozen=True)
-class _Layers:
-    several: Bools  # some subgroup holds more than one value
-    within: Floats
-    between: Floats
-    n_mean: Floats
-    df: Floats
-    p: Floats
+class _Design:
+    """Sizes and sums of squares of K characteristics cut into subgroups, all (K,)."""
+
+    n: Floats  # values
+    b: Floats  # subgroups
+    squared: Floats  # sum of squared subgroup sizes, divided by n
+    squares: Floats  # about the mean
+    inside: Floats  # about the subgroup means
+    between: Floats  # of the subgroup means about the mean, weighted with their sizes
+    layered: Bools  # at least half of several subgroups hold several values
 
 
-def _layers(values: Floats, start: Ints, subgroups: Subgroups, lost: Ints) -> _Layers:
-    """Between and within subgroups; `lost` (K,): degrees of freedom that stream means have already taken."""
+def _design(left: Floats, start: Ints, subgroups: Subgroups) -> _Design:
     of = subgroups.of
     n, b = np.diff(start).astype(np.float64), np.diff(of).astype(np.float64)
     size = np.diff(subgroups.start).astype(np.float64)
-    means = ragged.means(values, subgroups.start)
-    grand = ragged.means(values, start)
-    inside = ragged.sums(ragged.squares_about(values, subgroups.start, means), of)
-    outside = ragged.sums(size * (means - grand[ragged.owners(of)]) ** 2, of)
-    squared = ragged.sums(size**2, of)
-    df_in = n - b - lost
-    several = (df_in > 0) & (b > 1) & (2 * ragged.sums(size > 1, of) >= b)
-    with np.errstate(divide="ignore", invalid="ignore"):
-        msw, msb = inside / df_in, outside / (b - 1)
-        n0 = (n - squared / n) / (b - 1)
-        between = np.maximum(0.0, (msb - msw) / n0)
-        total = between + msw
-        n_mean = total / (between * squared / n**2 + msw / n)
-        df = total**2 / ((msb / n0) ** 2 / (b - 1) + ((1 - 1 / n0) * msw) ** 2 / df_in)
-        p = stats.f.sf(msb / msw, b - 1, df_in)
-    return _Layers(several, msw, between, n_mean, df, np.where(several, p, np.nan))
-
-
-@dataclass(frozen=True)
-class _Streams:
-    count: Ints
-    effect: Floats  # (N,) deviation of the value's stream from the mean of its characteristic
-    within: Floats  # variance within streams
-    variance: Floats  # component between streams, as it counts in the total
-    p: Floats
-    lost_df: Ints
-
-
-def _by_stream(values: Floats, start: Ints, stream: Ints, mean: Floats) -> _Streams:
-    """Streams as fixed effects: what their means differ by, freed of the noise of those means."""
-    k = len(start) - 1
-    owner = ragged.owners(start)
-    named = (stream >= 0) & (ragged.sums(stream < 0, start)[owner] == 0)  # every value of it must name its stream
-    effect = np.zeros(len(values))
-    nothing = np.full(k, np.nan)
-    if not named.any():
-        return _Streams(np.zeros(k, dtype=np.int64), effect, nothing, np.zeros(k), nothing, np.zeros(k, dtype=np.int64))
-    order = np.lexsort((stream, owner))
-    order = order[named[order]]
-    key_owner, key = owner[order], stream[order]
-    fresh = np.ones(len(order), dtype=bool)
-    fresh[1:] = (key[1:] != key[:-1]) | (key_owner[1:] != key_owner[:-1])
-    first = np.flatnonzero(fresh)
-    group = np.concatenate((first, [len(order)])).astype(np.int64)
-    group_owner = key_owner[first]
-    count = np.bincount(group_owner, minlength=k).astype(np.int64)
-    size = np.diff(group).astype(np.float64)
-    means = ragged.means(values[order], group)
-    effect[order] = np.repeat(means - mean[group_owner], np.diff(group))
-    inside = np.bincount(group_owner, ragged.squares_about(values[order], group, means), minlength=k)
-    outside = np.bincount(group_owner, size * (means - mean[group_owner]) ** 2, minlength=k)
-    n = np.bincount(group_owner, size, minlength=k)
-    squared = np.bincount(group_owner, size**2, minlength=k)
-    with np.errstate(divide="ignore", invalid="ignore"):
-        msw, msb = inside / (n - count), outside / (count - 1)
-        n0 = (n - squared / n) / (count - 1)
-        # Fixed streams: next week's parts come from the same ones, in the same shares w, so the variance among them
-        # is the component times 1 - sum of w squared.
-        variance = np.maximum(0.0, (msb - msw) / n0) * (1 - squared / n**2)
-        p = stats.f.sf(msb / msw, count - 1, n - count)
-    split = (count > 1) & (n > count)
-    effect = np.where(split[owner], effect, 0.0)
-    return _Streams(
-        count, effect, msw, np.where(split, variance, 0.0), np.where(split, p, np.nan), np.where(split, count - 1, 0)
+    means = ragged.means(left, subgroups.start)
+    inside = ragged.sums(ragged.squares_about(left, subgroups.start, means), of)
+    with np.errstate(invalid="ignore", divide="ignore"):
+        squared = ragged.sums(size**2, of) / n
+    return _Design(
+        n=n,
+        b=b,
+        squared=squared,
+        squares=ragged.sums(left**2, start),
+        inside=inside,
+        between=ragged.sums(size * means**2, of),
+        layered=(n > b) & (b > 1) & (2 * ragged.sums(size > 1, of) >= b),
     )
 
 
-def _moving_sigma(values: Floats, start: Ints) -> Floats:
+def _without_streams(design: _Design, split: Streams) -> tuple[Floats, Floats, Floats]:
+    """Squares about the stream means, those of the subgroups beyond the streams, number of streams."""
+    error = design.inside - split.explained
+    return split.inside, np.maximum(split.inside - error, 0.0), split.count
+
+
+@dataclass(frozen=True)
+class _Estimate:
+    between: Floats
+    stream: Floats
+    error: Floats
+    n_mean: Floats
+    df: Floats
+    between_p: Floats
+    stream_p: Floats
+
+
+def _estimate(
+    design: _Design, squares: Floats, between: Floats, a: Floats, serial: Floats, split: Streams | None = None
+) -> _Estimate:
+    """Components of n values in b subgroups and `a` streams; `squares` about stream means, `between` beyond them.
+
+    Expected mean squares (sigma_e error, sigma_b between subgroups, S = sum of n_i (stream mean - mean)^2):
+        MS error                      sigma_e^2
+        MS subgroups beyond streams   sigma_e^2 + n0 sigma_b^2,  n0 = (n - k_ba) / df_b
+        SS streams                    S + (k_ba - k_b) sigma_b^2 + (a - 1) sigma_e^2
+    with k_ba = sum n_ij^2 / n_i over streams i and subgroups j, k_b = sum n_j^2 / n. The fixed streams add S / n,
+    which is Henderson's component times 1 - sum of squared shares.
+    """
+    n, b, k_b = design.n, design.b, design.squared
+    k_ba = k_b if split is None else split.crossed
+    rank = np.zeros(len(n)) if split is None else split.rank
+    outside = np.zeros(len(n)) if split is None else split.outside
+    error = design.inside - (0.0 if split is None else split.explained)
+    df_e, df_b = n - b - rank, b + rank - a
+    r = np.where(np.isfinite(serial), serial, 0.0)
+    share = (1 - r**2) / (1 + r**2)  # of the degrees of freedom, and 1 / longer of the values for the mean
+    longer = (1 + r) / (1 - r)
+
+    with np.errstate(divide="ignore", invalid="ignore"):
+        n0 = (n - k_ba) / df_b
+        mse = np.maximum(error, 0.0) / df_e
+        msb = between / df_b * (b - 1) / (b - longer)
+        freedom_b = df_b * np.maximum(b * share - 1, 0.0) / (b - 1)
+        var_b = (msb - mse) / n0
+        layered = design.layered & (df_e > 0) & (df_b > 0) & (var_b > 0)
+
+        # Individuals, or no variation between subgroups: one error with all that the streams leave.
+        leaning = np.where(design.layered, 1.0, (n - 1) / (n - longer))
+        pooled = squares / (n - a) * leaning
+        freedom = np.where(design.layered, n - a, (n - a) * np.maximum(n * share - 1, 0.0) / (n - 1))
+
+        var_b, var_e = np.where(layered, var_b, 0.0), np.where(layered, mse, pooled)
+        noise = np.where(a > 1, (k_ba - k_b) / np.maximum(a - 1, 1) * var_b + var_e, 0.0)
+        stream = np.maximum(outside - (a - 1) * noise, 0.0) / n
+
+        # Satterthwaite: the total is a sum of mean squares with these weights.
+        weight_b = np.where(layered, (1 - (k_ba - k_b) / n) / n0, 0.0)
+        weight_e = 1 - (a - 1) / n - np.where(layered, weight_b, 0.0)
+        total = var_b + stream + var_e
+        uncertain = (
+            np.where(layered, (weight_b * msb) ** 2 / freedom_b, 0.0)
+            + (weight_e * var_e) ** 2 / np.where(layered, df_e, freedom)
+            + ((a - 1) * noise**2 + 2 * noise * n * stream) / n**2
+        )
+        df = np.where(total > 0, total**2 / uncertain, freedom)
+        of_mean = (var_b * k_b + var_e) * longer / n
+        n_mean = np.where(of_mean > 0, total / of_mean, n / longer)
+
+        tested = design.layered & (df_e > 0) & (df_b > 0)
+        between_p = np.where(tested, stats.f.sf(between / df_b / mse, df_b, df_e), np.nan)
+        stream_p = np.full(len(n), np.nan)
+        if split is not None:
+            # Connected streams are compared inside subgroups; others against what subgroups vary by.
+            inside = tested & (rank == a - 1)
+            u = np.where(layered, (k_ba - k_b) / (a - 1) / n0, 0.0)
+            df_n = np.where(layered, noise**2 / ((u * msb) ** 2 / freedom_b + ((1 - u) * mse) ** 2 / df_e), freedom)
+            stream_p = np.where(
+                inside,
+                stats.f.sf(split.explained / (a - 1) / mse, a - 1, df_e),
+                stats.f.sf(outside / (a - 1) / noise, a - 1, df_n),
+            )
+    return _Estimate(var_b, stream, var_e, n_mean, df, between_p, stream_p)
+
+
+def _choose(where: Bools, one: _Estimate, other: _Estimate) -> _Estimate:
+    return _Estimate(**{name: np.where(where, getattr(one, name), value) for name, value in vars(other).items()})
+
+
+def _moving(values: Floats, start: Ints) -> Floats:
+    """Mean moving range / d2 of each characteristic, (K,); NaN below two values."""
     step = np.abs(np.diff(values, prepend=np.nan))
     n = np.diff(start)
     step[start[:-1][n > 0]] = 0.0
     with np.errstate(divide="ignore", invalid="ignore"):
-        return ragged.sums(step, start) / (n - 1) / D2_OF_TWO
+        return np.where(n > 1, ragged.sums(step, start) / (n - 1) / D2_OF_TWO, np.nan)
