@@ -73,10 +73,10 @@ def demo(
     from portfolio.plan import Plan
 
     written = scenario.write(folder, ending=None if ending is None else _day(ending))
-    plan = Plan.read(written)
+    plan = Plan.read(written.plan)
     registry = _registry(plan)
     scenario.log_changes(plan)
-    _finish_run(plan, job, registry, as_of=scenario.end_of_data(plan))
+    _finish_run(plan, job, registry, as_of=written.end)
 
 
 @app.command()

@@ -114,6 +114,7 @@ def _why_not(out: pd.DataFrame, registry: pd.DataFrame, settings: Judgement) -> 
     n, df = out["measurements"].to_numpy(), out["df_effective"].to_numpy()
     stability_note = out["stability_note"].to_numpy()
     unjudged = (out["stability"] == NOT_JUDGED).to_numpy()
+    stable = (out["stability"] == STABLE).to_numpy()
     reasons = [
         (np.isnan(lower) & np.isnan(upper), "no_limits"),
         (lower >= upper, "crossed_limits"),
@@ -125,7 +126,8 @@ def _why_not(out: pd.DataFrame, registry: pd.DataFrame, settings: Judgement) -> 
         (unjudged & (stability_note == "coarse"), "coarse"),
         (out["recording_step"].to_numpy() > COARSE_STEP * sigma, "coarse"),
         (gauge_sd >= NOISY_GAUGE * sigma, "gauge_too_noisy"),
-        ((n < settings.minimum_values) | ~(df >= settings.minimum_df), "too_few"),
+        (n < settings.minimum_values, "too_few"),
+        (stable & ~(df >= settings.minimum_df), "too_few"),
         (unjudged, stability_note),
     ]
     note = np.full(len(out), "", dtype=object)

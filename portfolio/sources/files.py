@@ -58,7 +58,7 @@ def items(source: Source, plan: Plan, now: datetime) -> list[Item]:
         if not path.name.lower().endswith(KINDS):
             raise SourceError(f"{path.name}: files of this kind are not read. Use {', '.join(KINDS)}.")
         facts = path.stat()
-        if now.timestamp() - facts.st_mtime >= source.settle_seconds:
+        if not source.settle_seconds or now.timestamp() - facts.st_mtime >= source.settle_seconds:
             name = path.relative_to(plan.folder).as_posix() if path.is_relative_to(plan.folder) else path.as_posix()
             found.append(Item(path, name, facts.st_size, _time(facts.st_mtime)))
     return found
@@ -90,6 +90,8 @@ def stage(connection: duckdb.DuckDBPyConnection, item: Item, source: Source, spo
         If the file as a whole cannot be used.
     """
     copy = spool / "item.csv"
+    for table in ("reject_errors", "reject_scans"):  # they grow over the scans of a connection
+        connection.execute(f"drop table if exists {table}")
     try:
         if item.path.suffix.lower() == ".parquet":
             yield _parquet(connection, item, source)

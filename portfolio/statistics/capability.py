@@ -56,14 +56,25 @@ def sigma_nodes(df: Floats) -> Floats:
 
 
 def core_probability(
-    mean: Floats, sigma: Floats, n_mean: Floats, df: Floats, lower: Floats, upper: Floats, target: ArrayLike
+    mean: Floats,
+    sigma: Floats,
+    n_mean: Floats,
+    df: Floats,
+    lower: Floats,
+    upper: Floats,
+    target: ArrayLike,
+    *,
+    nodes: Floats | None = None,
 ) -> Floats:
     """P(Cpk >= target | data) with both limits; NaN where sigma or df do not allow it.
 
-    `n_mean` effective number of values behind the mean, `df` degrees of freedom of sigma.
+    `n_mean` effective number of values behind the mean, `df` degrees of freedom of sigma; `nodes` are
+    `sigma_nodes(df)` where the caller asks several times.
     """
     mean, sigma, n_mean, lower, upper, target = np.broadcast_arrays(mean, sigma, n_mean, lower, upper, target)
-    s = np.where(sigma > 0, sigma, np.nan)[:, None] * sigma_nodes(np.broadcast_to(df, mean.shape))
+    if nodes is None:
+        nodes = sigma_nodes(np.broadcast_to(df, mean.shape))
+    s = np.where(sigma > 0, sigma, np.nan)[:, None] * nodes
     root = np.sqrt(n_mean)[:, None]
     margin = 3 * target[:, None] * s
     with np.errstate(invalid="ignore"):
@@ -113,14 +124,14 @@ def capability_bounds(
     low, high = np.full(len(estimate), np.nan), np.full(len(estimate), np.nan)
     if usable.any():
         c, n, nu = estimate[usable], n_mean[usable], df[usable]
-        low[usable] = _bound(c, n, nu, confidence)
-        high[usable] = _bound(c, n, nu, 1 - confidence)
+        ratio = 1 / sigma_nodes(nu)
+        low[usable] = _bound(c, n, ratio, confidence)
+        high[usable] = _bound(c, n, ratio, 1 - confidence)
     return low, high
 
 
-def _bound(estimate: Floats, n: Floats, df: Floats, level: float) -> Floats:
-    """c with P(Cpk >= c | data) = level: the mixture over sigma of Phi(sqrt(n) (3 c_hat s / sigma - 3 c))."""
-    ratio = 1 / sigma_nodes(df)
+def _bound(estimate: Floats, n: Floats, ratio: Floats, level: float) -> Floats:
+    """c with P(Cpk >= c | data) = level: the mixture over s / sigma of Phi(sqrt(n) (3 c_hat s / sigma - 3 c))."""
     root = 3 * np.sqrt(n)[:, None]
     centre = estimate[:, None] * ratio
     reach = 10 / (3 * np.sqrt(n)) + np.abs(estimate) * (ratio.max(axis=1) - ratio.min(axis=1)) + 1e-9

@@ -67,8 +67,9 @@ def centre(
         window_low, window_high = np.where(open_window, low, np.nan), np.where(open_window, high, np.nan)
         one_sided = np.isfinite(lower) != np.isfinite(upper)
         needed = np.where(one_sided, np.where(np.isfinite(lower), low, high), np.nan)
-    sure_low, sure_high = _sure_window(s, after, df, lower, upper, target, aim)
-    chance = np.where(np.isfinite(aim), _chance(aim, s, after, df, lower, upper, target), np.nan)
+    nodes = capability.sigma_nodes(df)
+    sure_low, sure_high = _sure_window(s, after, nodes, lower, upper, target, aim)
+    chance = np.where(np.isfinite(aim), _chance(aim, s, after, nodes, lower, upper, target), np.nan)
     bound, _ = capability.capability_bounds(aim, s, after, df, lower, upper)
     return Centering(
         aim=aim,
@@ -82,7 +83,7 @@ def centre(
         cpk_centered=np.where(np.isfinite(aim), capability.indices(aim, s, lower, upper).cpk, np.nan),
         cpk_centered_low=bound,
         chance_centered=chance,
-        chance_now=_chance(mean, s, n_mean, df, lower, upper, target),
+        chance_now=_chance(mean, s, n_mean, nodes, lower, upper, target),
         ppm_now=capability.expected_ppm(mean, s, n_mean, df, lower, upper),
         ppm_centered=np.where(
             np.isfinite(aim), capability.expected_ppm(aim, s, after, df, lower, upper), np.nan
@@ -102,20 +103,20 @@ def _chance(mean: Floats, s: Floats, n: Floats, df: Floats, lower: Floats, upper
 
 
 def _sure_window(
-    s: Floats, n: Floats, df: Floats, lower: Floats, upper: Floats, target: Floats, aim: Floats
+    s: Floats, n: Floats, nodes: Floats, lower: Floats, upper: Floats, target: Floats, aim: Floats
 ) -> tuple[Floats, Floats]:
     """Means with P(Cpk >= target) >= SURE, symmetric about the middle; NaN where even the middle is below."""
-    two = np.isfinite(lower) & np.isfinite(upper) & np.isfinite(s) & np.isfinite(aim) & (df > 0)
+    two = np.isfinite(lower) & np.isfinite(upper) & np.isfinite(s) & np.isfinite(aim)
     out = np.full(len(s), np.nan), np.full(len(s), np.nan)
     if not two.any():
         return out
-    l, u, sd, n, df, t = lower[two], upper[two], s[two], n[two], df[two], target[two]
+    l, u, sd, n, inner, t = lower[two], upper[two], s[two], n[two], nodes[two], target[two]
     middle = (l + u) / 2
-    best = _chance(middle, sd, n, df, l, u, t)
+    best = _chance(middle, sd, n, inner, l, u, t)
     near, far = np.zeros(len(middle)), (u - l) / 2
     for _ in range(HALVINGS):
         half = (near + far) / 2
-        inside = _chance(middle + half, sd, n, df, l, u, t) >= SURE
+        inside = _chance(middle + half, sd, n, inner, l, u, t) >= SURE
         near, far = np.where(inside, half, near), np.where(inside, far, half)
     sure = best >= SURE
     out[0][two] = np.where(sure, middle - near, np.nan)

@@ -56,7 +56,7 @@ def isolated_extremes(values: Floats, start: Ints, subgroup_start: Ints, of: Int
     m = np.diff(of)
     with np.errstate(divide="ignore", invalid="ignore"):
         skew = np.log((high - middle) / (middle - low)) / Z95
-        error = FORGIVING / np.sqrt(n)
+    error = FORGIVING / np.sqrt(np.maximum(n, 1))
     owner = np.repeat(np.arange(len(n)), n)
     group_owner = np.repeat(np.arange(len(m)), m)
     p_group = np.zeros(int(of[-1]))
