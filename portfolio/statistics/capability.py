@@ -15,11 +15,11 @@ from numpy.typing import ArrayLike, NDArray
 from scipy import stats
 from scipy.special import gammaincinv, ndtr, stdtr
 
+from portfolio.statistics import noncentral
 from portfolio.statistics.ragged import Bools, Floats
 
 NODES = 160
 "Equal-probability nodes of the chi-square distribution: error below 0.0012 (capability study, section 1)."
-HALVINGS = 60
 
 
 @dataclass(frozen=True)
@@ -33,9 +33,12 @@ class Indices:
 
 
 def indices(mean: Floats, sigma: Floats, lower: Floats, upper: Floats) -> Indices:
-    """Cp, Cpl, Cpu, Cpk; NaN where sigma is not above 0. Source: Kane (1986); ISO 22514-2 with the total sigma."""
+    """Cp, Cpl, Cpu, Cpk of K characteristics; NaN where sigma is not above 0 or the limits are crossed.
+
+    Source: Kane (1986); ISO 22514-2 with the total sigma, AIAG SPC with the within-subgroup sigma.
+    """
     with np.errstate(invalid="ignore", divide="ignore"):
-        s = np.where(sigma > 0, sigma, np.nan)
+        s = np.where((sigma > 0) & (np.asarray(lower) < upper), sigma, np.nan)
         cpl = np.where(np.isfinite(lower), (mean - lower) / (3 * s), np.nan)
         cpu = np.where(np.isfinite(upper), (upper - mean) / (3 * s), np.nan)
         cp = np.where(np.isfinite(lower) & np.isfinite(upper), (upper - lower) / (6 * s), np.nan)
@@ -50,37 +53,50 @@ def cpm(mean: Floats, sigma: Floats, lower: Floats, upper: Floats, aim: Floats) 
 
 def sigma_nodes(df: Floats) -> Floats:
     """sigma / s at NODES equal-probability nodes of its posterior, (K, NODES): sqrt(df / chi-square)."""
+    different, which = np.unique(np.where(df > 0, df, np.nan), return_inverse=True)  # individuals share their df
     level = (np.arange(NODES) + 0.5) / NODES
-    safe = np.where(df > 0, df, np.nan)[:, None]
-    return np.sqrt(safe / 2 / gammaincinv(safe / 2, level[None, :]))
+    half = different[:, None] / 2
+    nodes: Floats = np.sqrt(half / gammaincinv(half, level[None, :]))
+    return nodes[which]
 
 
 def core_probability(
-    mean: Floats,
-    sigma: Floats,
-    n_mean: Floats,
-    df: Floats,
-    lower: Floats,
-    upper: Floats,
-    target: ArrayLike,
-    *,
-    nodes: Floats | None = None,
+    mean: Floats, sigma: Floats, n_mean: Floats, df: Floats, lower: Floats, upper: Floats, target: ArrayLike
 ) -> Floats:
-    """P(Cpk >= target | data) with both limits; NaN where sigma or df do not allow it.
+    """P(Cpk >= target | data) with both limits.
 
-    `n_mean` effective number of values behind the mean, `df` degrees of freedom of sigma; `nodes` are
-    `sigma_nodes(df)` where the caller asks several times.
+    Parameters
+    ----------
+    mean, sigma : (K,) unit of the characteristic
+    n_mean, df : (K,) effective number of values behind the mean, effective degrees of freedom of sigma
+    target : (K,) or one number
+
+    Returns
+    -------
+    (K,) probability; NaN where sigma or df is not above 0, the limits are crossed or there is none
+
+    Source
+    ------
+    Right-Haar posterior of a normal process, averaged over sigma: capability study, section 1. With one limit it is
+    the confidence level of the non-central t bound (Owen 1968).
     """
-    mean, sigma, n_mean, lower, upper, target = np.broadcast_arrays(mean, sigma, n_mean, lower, upper, target)
-    if nodes is None:
-        nodes = sigma_nodes(np.broadcast_to(df, mean.shape))
-    s = np.where(sigma > 0, sigma, np.nan)[:, None] * nodes
-    root = np.sqrt(n_mean)[:, None]
-    margin = 3 * target[:, None] * s
-    with np.errstate(invalid="ignore"):
-        below = ndtr(root * (upper[:, None] - margin - mean[:, None]) / s)
-        above = ndtr(root * (lower[:, None] + margin - mean[:, None]) / s)
-        return np.maximum(below - above, 0.0).mean(axis=1)
+    mean, sigma, df, target = np.broadcast_arrays(mean, sigma, df, np.asarray(target, dtype=np.float64))
+    usable = (sigma > 0) & (np.isfinite(lower) | np.isfinite(upper)) & (np.asarray(lower) < upper)
+    return probability_at(sigma_nodes(df), mean, np.where(usable, sigma, np.nan), n_mean, lower, upper, target)
+
+
+def probability_at(
+    nodes: Floats, mean: Floats, sigma: Floats, n_mean: Floats, lower: Floats, upper: Floats, target: Floats
+) -> Floats:
+    """The core probability with nodes (K, NODES) that are known already: several means, one sigma."""
+    with np.errstate(invalid="ignore", divide="ignore"):
+        root = np.sqrt(n_mean)
+        slack = 3 * root * target
+        scale = (root / sigma)[:, None] / nodes
+        below = ndtr((upper - mean)[:, None] * scale - slack[:, None])
+        above = ndtr((lower - mean)[:, None] * scale + slack[:, None])
+        inside: Floats = np.maximum(below - above, 0.0).mean(axis=1)
+    return inside
 
 
 def nearest_limits(mean: Floats, lower: Floats, upper: Floats) -> tuple[Floats, Floats]:
@@ -113,49 +129,40 @@ def capability_bounds(
     -------
     low, high : (K,) NaN where sigma is not above 0 or df below 1
 
+    Raises
+    ------
+    ValueError
+        If `confidence` is not between 0 and 1.
+
     Source
     ------
-    Non-central t, Owen (1968): 3 sqrt(n) Cpk_hat is non-central t with non-centrality 3 sqrt(n) Cpk. Solved by
-    bisection on the equivalent normal / chi-square mixture; agreement with Bissell (1990) eq. 5 checked in tests.
+    Non-central t, Owen (1968): 3 sqrt(n) Cpk_hat is non-central t with non-centrality 3 sqrt(n) Cpk. Agreement with
+    scipy's non-central t and with Bissell (1990) checked in tests.
     """
-    near_low, near_high = nearest_limits(mean, lower, upper)
-    estimate = indices(mean, sigma, near_low, near_high).cpk
+    _check(confidence)
+    estimate = indices(mean, sigma, *nearest_limits(mean, lower, upper)).cpk
     usable = np.isfinite(estimate) & (df >= 1) & (n_mean > 0)
     low, high = np.full(len(estimate), np.nan), np.full(len(estimate), np.nan)
-    if usable.any():
-        c, n, nu = estimate[usable], n_mean[usable], df[usable]
-        ratio = 1 / sigma_nodes(nu)
-        low[usable] = _bound(c, n, ratio, confidence)
-        high[usable] = _bound(c, n, ratio, 1 - confidence)
+    c, n, nu = estimate[usable], n_mean[usable], df[usable]
+    low[usable] = noncentral.index_bound(c, n, nu, confidence)
+    high[usable] = noncentral.index_bound(c, n, nu, 1 - confidence)
     return low, high
 
 
-def _bound(estimate: Floats, n: Floats, ratio: Floats, level: float) -> Floats:
-    """c with P(Cpk >= c | data) = level: the mixture over s / sigma of Phi(sqrt(n) (3 c_hat s / sigma - 3 c))."""
-    root = 3 * np.sqrt(n)[:, None]
-    centre = estimate[:, None] * ratio
-    reach = 10 / (3 * np.sqrt(n)) + np.abs(estimate) * (ratio.max(axis=1) - ratio.min(axis=1)) + 1e-9
-    low, high = centre.min(axis=1) - reach, centre.max(axis=1) + reach
-    for _ in range(HALVINGS):
-        middle = (low + high) / 2
-        enough = ndtr(root * (centre - middle[:, None])).mean(axis=1) > level
-        low, high = np.where(enough, middle, low), np.where(enough, high, middle)
-        if np.max(high - low) < 1e-9:
-            break
-    return (low + high) / 2
-
-
 def spread_bounds(cp: Floats, df: Floats, *, confidence: float = 0.95) -> tuple[Floats, Floats]:
-    """One-sided bounds of Cp: cp sqrt(chi2 / df). Source: Kane (1986)."""
-    with np.errstate(invalid="ignore"):
+    """One-sided bounds of Cp, (K,) each: cp sqrt(chi2 / df); NaN where df is not above 0. Source: Kane (1986)."""
+    _check(confidence)
+    with np.errstate(invalid="ignore", divide="ignore"):
+        nu = np.where(df > 0, df, np.nan)
         return (
-            cp * np.sqrt(stats.chi2.ppf(1 - confidence, df) / df),
-            cp * np.sqrt(stats.chi2.ppf(confidence, df) / df),
+            cp * np.sqrt(stats.chi2.ppf(1 - confidence, nu) / nu),
+            cp * np.sqrt(stats.chi2.ppf(confidence, nu) / nu),
         )
 
 
 def bissell_bounds(cpk: Floats, n: Floats, df: Floats, *, confidence: float = 0.95) -> tuple[Floats, Floats]:
     """Cpk -+ z sqrt(1 / (9 n) + Cpk^2 / (2 df)): a check of the exact bounds. Source: Bissell (1990)."""
+    _check(confidence)
     half = stats.norm.ppf(confidence) * np.sqrt(1 / (9 * n) + cpk**2 / (2 * df))
     return cpk - half, cpk + half
 
@@ -192,3 +199,8 @@ def verdict(low: Floats, high: Floats, index: Floats, target: Floats) -> tuple[N
         close = (low < target) & (high >= target)
         word = np.where(index >= target, "capable", "not capable").astype(object)
     return word, close
+
+
+def _check(confidence: float) -> None:
+    if not 0 < confidence < 1:
+        raise ValueError(f"confidence is {confidence}; give a probability between 0 and 1, such as 0.95")

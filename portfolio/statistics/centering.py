@@ -98,8 +98,8 @@ def significant(move: Floats, sigma: Floats, n_mean: Floats) -> Bools:
         return np.abs(move) > LEAST_MOVE * sigma / np.sqrt(n_mean)
 
 
-def _chance(mean: Floats, s: Floats, n: Floats, df: Floats, lower: Floats, upper: Floats, target: Floats) -> Floats:
-    return capability.core_probability(mean, s, n, df, lower, upper, target)
+def _chance(mean: Floats, s: Floats, n: Floats, nodes: Floats, lower: Floats, upper: Floats, target: Floats) -> Floats:
+    return capability.core_probability(mean, s, n, np.empty(0), lower, upper, target, nodes=nodes)
 
 
 def _sure_window(
