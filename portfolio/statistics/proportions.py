@@ -1,4 +1,7 @@
-"""Intervals of a share: Clopper-Pearson where a promise is made, Wilson where shares are compared."""
+"""Intervals of a share: Clopper-Pearson where a promise is made, Wilson where shares are compared.
+
+Arrays of any equal shape; NaN where nothing was counted or the count does not fit into it.
+"""
 
 from __future__ import annotations
 
@@ -10,31 +13,37 @@ from portfolio.statistics.ragged import Floats
 
 
 def clopper_pearson(count: ArrayLike, n: ArrayLike, *, confidence: float = 0.95) -> tuple[Floats, Floats]:
-    """Two-sided interval of a share, `count` of `n`; NaN where n is 0. Source: Clopper & Pearson (1934)."""
-    count, n = np.asarray(count, dtype=np.float64), np.asarray(n, dtype=np.float64)
+    """Two-sided interval of a share, `count` of `n`, never too short. Source: Clopper & Pearson (1934)."""
+    k, n = _checked(count, n, confidence)
     tail = (1 - confidence) / 2
-    low = np.where(count > 0, stats.beta.ppf(tail, np.maximum(count, 1), n - count + 1), 0.0)
-    return np.where(n > 0, low, np.nan), _upper(count, n, tail)
+    low = np.where(k == 0, 0.0 * k, stats.beta.ppf(tail, np.maximum(k, 1), n - k + 1))
+    return low, _upper(k, n, tail)
 
 
 def clopper_pearson_upper(count: ArrayLike, n: ArrayLike, *, confidence: float = 0.95) -> Floats:
     """One-sided upper bound of a share: with 0 of n it is 1 - (1 - confidence)^(1/n)."""
-    return _upper(np.asarray(count, dtype=np.float64), np.asarray(n, dtype=np.float64), 1 - confidence)
+    k, n = _checked(count, n, confidence)
+    return _upper(k, n, 1 - confidence)
 
 
 def wilson(count: ArrayLike, n: ArrayLike, *, confidence: float = 0.95) -> tuple[Floats, Floats]:
-    """Two-sided score interval of a share; NaN where n is 0. Source: Wilson (1927), Newcombe (1998) method 3."""
-    count, n = np.asarray(count, dtype=np.float64), np.asarray(n, dtype=np.float64)
+    """Two-sided score interval of a share. Source: Wilson (1927), Newcombe (1998) method 3."""
+    k, n = _checked(count, n, confidence)
     z2 = stats.norm.isf((1 - confidence) / 2) ** 2
-    with np.errstate(invalid="ignore", divide="ignore"):
-        middle = (count + z2 / 2) / (n + z2)
-        half = np.sqrt(z2) / (n + z2) * np.sqrt(count * (n - count) / n + z2 / 4)
-    low, high = np.clip(middle - half, 0, 1), np.clip(middle + half, 0, 1)
-    return np.where(n > 0, np.where(count == 0, 0.0, low), np.nan), np.where(
-        n > 0, np.where(count == n, 1.0, high), np.nan
-    )
+    middle = (k + z2 / 2) / (n + z2)
+    half = np.sqrt(z2) / (n + z2) * np.sqrt(k * (n - k) / n + z2 / 4)
+    # Exactly 0 and 1 at the ends, where rounding would leave a trace.
+    return np.where(k == 0, 0.0 * k, middle - half), np.where(k == n, 1.0 + 0.0 * k, middle + half)
 
 
-def _upper(count: Floats, n: Floats, tail: float) -> Floats:
-    inside = stats.beta.isf(tail, count + 1, np.maximum(n - count, 1))
-    return np.where(n > 0, np.where(count < n, inside, 1.0), np.nan)
+def _checked(count: ArrayLike, n: ArrayLike, confidence: float) -> tuple[Floats, Floats]:
+    if not 0 < confidence < 1:
+        raise ValueError(f"confidence is {confidence}; give a probability between 0 and 1, such as 0.95")
+    k, m = np.broadcast_arrays(np.asarray(count, dtype=np.float64), np.asarray(n, dtype=np.float64))
+    usable = (m > 0) & (k >= 0) & (k <= m)
+    return np.where(usable, k, np.nan), np.where(usable, m, np.nan)
+
+
+def _upper(k: Floats, n: Floats, tail: float) -> Floats:
+    inside: Floats = stats.beta.isf(tail, k + 1, np.maximum(n - k, 1))
+    return np.where(k == n, 1.0, inside)
