@@ -43,6 +43,7 @@ def _templates() -> dict[str, dict[str, Any]]:
         "history": _history(),
         "overview": _overview(),
         "card": _card(),
+        "intervals": _intervals(),
     }
     return {name: _silent(vl_convert.vegalite_to_vega(chart.to_dict())) for name, chart in made.items()}
 
@@ -241,6 +242,17 @@ def _history() -> alt.LayerChart:
     line = alt.Chart(rows).mark_line(stroke=PROCESS, point={"fill": PROCESS, "size": 18}).encode(x=_time(), y=_measured("v"))
     rule = alt.Chart(target).mark_rule(stroke=SPECIFICATION, strokeDash=[6, 3]).encode(y=alt.Y("v:Q"))
     return _dressed(alt.layer(band, line, rule), height=150)
+
+
+def _intervals() -> alt.LayerChart:
+    rows = _named("rows")
+    x = alt.X("v:Q", title=None, scale=alt.Scale(domain=[0, 1]), axis=alt.Axis(format=".0%", tickCount=6))
+    y = alt.Y("w:N", title=None, sort=None, axis=alt.Axis(labelLimit=220, ticks=False, domain=False))
+    bar = alt.Chart(rows).mark_rule(stroke=PROCESS, strokeWidth=6, opacity=0.35).encode(
+        x=alt.X("l:Q", title=None, scale=alt.Scale(domain=[0, 1])), x2="u:Q", y=y
+    )
+    dot = alt.Chart(rows).mark_point(filled=True, size=90, color=PROCESS, opacity=1).encode(x=x, y=y)
+    return _dressed(alt.layer(bar, dot), height=120)
 
 
 def _overview() -> alt.LayerChart:

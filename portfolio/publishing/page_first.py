@@ -1,0 +1,156 @@
+"""The first screen: which few projects do we start, and why should I believe it?"""
+
+from __future__ import annotations
+
+from collections import Counter
+from typing import TYPE_CHECKING, Any
+
+from portfolio.publishing import charts, names, records, wording
+from portfolio.publishing.numbers import Numbers, missing
+from portfolio.result import ROUTES
+
+if TYPE_CHECKING:
+    from portfolio.publishing.pages import PageData
+
+WORDS = ("no", "one", "two", "three", "four", "five")
+NEXT = 25
+
+
+def context(data: PageData, rows: list[dict[str, Any]], n: Numbers) -> dict[str, Any]:
+    """What index.html lays out."""
+    listed = sorted((row for row in rows if not missing(row["rank"])), key=lambda row: row["rank"])
+    first, rest = listed[: data.plan.report.cards], listed[data.plan.report.cards :][:NEXT]
+    counts = Counter(row["cell"] for row in rows)
+    works = {row["site"] for row in rows if not missing(row["site"])}
+    target = data.plan.targets["default"]
+    judged = len(rows) - counts["not judged"]
+    return {
+        "headline": _headline(len(first)),
+        "lede": _lede(len(rows), len(works), judged, len(listed), n),
+        "alarms": alarms(data, rows, n),
+        "cards": [card(row, n, f"k{i}-") for i, row in enumerate(first)],
+        "cells": {cell: n.count(counts[cell]) for cell in wording.CELL},
+        "routes": [
+            {"route": route, "count": n.count(number), "text": wording.ROUTE[route]}
+            for route in ROUTES
+            if (number := sum(row["route"] == route for row in rows))
+        ],
+        "listed": n.count(len(listed)),
+        "not_judged": not_judged(rows, n),
+        "next": [line(row, n) for row in rest],
+        "news": _news(data, rows),
+        "target": n.index(target),
+        "drawings": {
+            "overview": records.overview(data.results, target),
+            "names": [{"n": names.short(row["characteristic"], 80), "p": row["page"]} for row in rows],
+        },
+        "outside_picture": n.count(sum(missing(row["cpk_centered"]) or missing(row["index"]) for row in rows)),
+    }
+
+
+def card(row: dict[str, Any], n: Numbers, prefix: str) -> dict[str, Any]:
+    """One proposal with its reasons, its doubts and its picture."""
+    caption = (
+        f"Now and with the mean moved, between the specification limits; the shaded band holds the means that reach "
+        f"{n.index(row['target_cpk'])}."
+    )
+    return {
+        **line(row, n),
+        "move": wording.move_sentence(row, n),
+        "gain": wording.gain_sentence(row, n),
+        "believe": wording.believe(row, n),
+        "cautions": wording.cautions(row, n),
+        "critical": row["class"] in wording.SAFETY_CLASSES,
+        "picture": charts.svg("card", records.centering(row), caption, prefix),
+        "caption": caption,
+    }
+
+
+def line(row: dict[str, Any], n: Numbers) -> dict[str, Any]:
+    """One characteristic of the centering list in short."""
+    return {
+        "rank": "" if missing(row["rank"]) else int(row["rank"]),
+        "name": row["characteristic"],
+        "page": row["page"],
+        "where": place(row),
+        "action": wording.action(row, n),
+        "now": n.index(row["index"]),
+        "after": n.index(row["cpk_centered"]),
+        "target": n.index(row["target_cpk"]),
+        "chance": n.chance(row["chance_centered"]),
+        "tier": "should reach the target" if row["centering"] == "reaches" else "may reach the target",
+        "ppm_now": n.ppm(row["ppm_now"]),
+        "ppm_after": n.ppm(row["ppm_centered"]),
+        "parts": n.rough(row["parts_per_year"]),
+        "money": n.money(row["saving_per_year"], row["currency"]),
+    }
+
+
+def place(row: dict[str, Any]) -> str:
+    """Site, part, operation, machine in one line."""
+    parts = [str(row[key]) for key in ("site", "part", "operation", "machine") if not missing(row[key])]
+    return ", ".join(parts)
+
+
+def alarms(data: PageData, rows: list[dict[str, Any]], n: Numbers) -> list[str]:
+    """What failed or is missing, so that nobody has to look into a log."""
+    out = []
+    for pull in data.pulls.to_dict("records"):
+        if pull["status"] == "failed":
+            out.append(f"Source “{pull['source']}” failed at the last pull: {pull['message']}")
+    if len(data.refused):
+        some = ", ".join(str(item) for item in data.refused["item"].head(3))
+        out.append(f"{n.count(len(data.refused))} files were refused whole: {some}.")
+    silent = sum(row["stability_note"] == "silent" for row in rows)
+    if silent:
+        out.append(f"{n.count(silent)} characteristics have sent nothing for weeks.")
+    suspect = sum(row["capability_note"] == "suspect_limits" for row in rows)
+    if suspect:
+        out.append(f"{n.count(suspect)} characteristics lie wholly outside their limits: a wrong limit or unit is likely.")
+    critical = sum(
+        row["class"] in wording.SAFETY_CLASSES and row["capability"] == "not capable" and row["cell"] != "not judged"
+        for row in rows
+    )
+    if critical:
+        out.append(
+            f"{n.count(critical)} critical characteristics are below their target: contain first; customer and legal "
+            "requirements go before any project."
+        )
+    return out
+
+
+def not_judged(rows: list[dict[str, Any]], n: Numbers) -> list[dict[str, str]]:
+    """Why characteristics were not judged, most frequent first."""
+    why = Counter(
+        row["capability_note"] or row["stability_note"] for row in rows if row["cell"] == "not judged"
+    )
+    return [{"count": n.count(count), "why": wording.NOT_JUDGED.get(code, code)} for code, count in why.most_common()]
+
+
+def _headline(number: int) -> str:
+    if not number:
+        return "Nothing to re-centre this week"
+    return f"Start {'this one' if number == 1 else f'these {WORDS[number]}'} this week"
+
+
+def _lede(total: int, works: int, judged: int, listed: int, n: Numbers) -> str:
+    where = f" at {n.count(works)} sites" if works > 1 else ""
+    head = f"{n.count(total)} characteristics{where}: {n.count(judged)} judged, {n.count(total - judged)} not."
+    if not listed:
+        return f"{head} For none of them would moving the mean alone be enough and worth it."
+    tail = "it is" if listed == 1 else "they are"
+    return f"{head} For {n.count(listed)} of them moving the mean alone is enough to reach the target; {tail} ranked by what a move saves."
+
+
+def _news(data: PageData, rows: list[dict[str, Any]]) -> dict[str, Any]:
+    pages = {row["characteristic"]: row["page"] for row in rows}
+
+    def some(status: str) -> list[dict[str, Any]]:
+        part = data.ranking[data.ranking["status"] == status]
+        return [
+            {"name": row["characteristic"], "page": pages.get(row["characteristic"]), "why": wording.left_list(row["reason"] or "")}
+            for row in part.to_dict("records")
+        ]
+
+    known_before = bool((data.ranking["status"] != "new").any()) if len(data.ranking) else False
+    return {"first_time": not known_before, "new": some("new"), "left": some("left")}
