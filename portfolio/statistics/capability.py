@@ -121,10 +121,12 @@ def probability_at(
 
 
 def nearest_limits(mean: Floats, lower: Floats, upper: Floats) -> tuple[Floats, Floats]:
-    """The limits with the farther one taken away."""
+    """The limits with the farther one taken away, (K,) each; NaN where they are crossed."""
     with np.errstate(invalid="ignore"):
         lower_is_near = mean - lower <= upper - mean
-    return np.where(lower_is_near, lower, -np.inf), np.where(lower_is_near, np.inf, upper)
+    near = np.where(lower_is_near, lower, -np.inf), np.where(lower_is_near, np.inf, upper)
+    crossed = np.asarray(lower) >= upper
+    return np.where(crossed, np.nan, near[0]), np.where(crossed, np.nan, near[1])
 
 
 def nearest_limit_probability(
@@ -161,7 +163,7 @@ def capability_bounds(
     scipy's non-central t and with Bissell (1990) checked in tests.
     """
     _check(confidence)
-    estimate = indices(mean, sigma, *nearest_limits(mean, lower, upper)).cpk
+    estimate = indices(mean, sigma, lower, upper).cpk  # already by the nearest limit
     usable = np.isfinite(estimate) & (df >= 1) & (n_mean > 0)
     low, high = np.full(len(estimate), np.nan), np.full(len(estimate), np.nan)
     c, n, nu = estimate[usable], n_mean[usable], df[usable]

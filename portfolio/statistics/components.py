@@ -174,7 +174,7 @@ def _estimate(
     df_e, df_b = n - b - rank, b + rank - a
     r = np.where(np.isfinite(serial), serial, 0.0)
     share = (1 - r**2) / (1 + r**2)  # of the degrees of freedom, and 1 / longer of the values for the mean
-    longer = (1 + r) / (1 - r)
+    longer = np.minimum((1 + r) / (1 - r), np.maximum(b / 2, 1.0))  # two independent values are left at least
 
     with np.errstate(divide="ignore", invalid="ignore"):
         n0 = (n - k_ba) / df_b

@@ -45,5 +45,5 @@ def _checked(count: ArrayLike, n: ArrayLike, confidence: float) -> tuple[Floats,
 
 
 def _upper(k: Floats, n: Floats, tail: float) -> Floats:
-    inside: Floats = stats.beta.isf(tail, k + 1, np.maximum(n - k, 1))
+    inside = np.asarray(stats.beta.isf(tail, k + 1, np.maximum(n - k, 1)), dtype=np.float64)
     return np.where(k == n, 1.0, inside)
