@@ -140,7 +140,7 @@ def publish(plan: Plan, *, progress: Progress | None = None) -> PublishReport:
         run = newest(store, plan)
         data = pages.collect(store, int(run["run_id"]), plan)
         issue = folder.publish(
-            pages.render(data, progress=_counted(progress)),
+            pages.render(data, _counted(progress), folder.issues(plan.report_path)),
             report=plan.report_path,
             slot=_week(run["as_of"], plan),
             keep=plan.report.keep_issues,

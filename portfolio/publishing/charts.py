@@ -172,7 +172,7 @@ def _spread() -> alt.LayerChart:
 
 def _value_axis() -> alt.X:
     return alt.X(
-        "x:Q", title=None, scale=alt.Scale(zero=False, nice=False), axis=alt.Axis(grid=False, tickCount=7, labelFlush=True)
+        "x:Q", title=None, scale=alt.Scale(zero=False, nice=False, padding=28), axis=alt.Axis(grid=False, tickCount=7, labelFlush=True)
     )
 
 

@@ -112,6 +112,8 @@ def _point_to(folder: Path, report: Path) -> None:
 
 def issues(report: Path) -> list[Path]:
     """Published issues, oldest first."""
+    if not report.is_dir():
+        return []
     found = [(ISSUE.match(path.name), path) for path in report.iterdir() if path.is_dir()]
     return [path for _, path in sorted(((m.group(1), int(m.group(2) or 1)), path) for m, path in found if m)]
 

@@ -10,6 +10,7 @@ from zoneinfo import ZoneInfo
 import pandas as pd
 
 THIN = "\u202f"  # narrow space that does not break: between number and unit, in groups of three
+SPACE = "\u00a0"  # before a unit
 MINUS = "\u2212"
 SUPERSCRIPT = str.maketrans("-0123456789", "⁻⁰¹²³⁴⁵⁶⁷⁸⁹")
 
@@ -57,7 +58,7 @@ class Numbers:
     def quantity(self, value: Any, unit: Any, scale: Any = None, *, sign: bool = False) -> str:
         """A measured quantity with its unit."""
         text = self.value(value, scale, sign=sign)
-        return text if missing(unit) or text == "–" else f"{text}{THIN}{unit}"
+        return text if missing(unit) or text == "–" else f"{text}{SPACE}{unit}"
 
     def count(self, value: Any) -> str:
         """A whole number in groups of three."""
@@ -93,7 +94,7 @@ class Numbers:
     def money(self, value: Any, currency: Any) -> str:
         """An amount, two significant digits, with its currency."""
         text = self.rough(value)
-        return text if missing(currency) or text == "–" else f"{text}{THIN}{currency}"
+        return text if missing(currency) or text == "–" else f"{text}{SPACE}{currency}"
 
     def date(self, moment: Any) -> str:
         """The day in the plan's zone, ISO 8601."""

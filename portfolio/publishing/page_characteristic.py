@@ -25,13 +25,11 @@ def context(
     drawings: dict[str, Any] = {}
     pictures: dict[str, str] = {}
     if evidence is not None and row["stability"] != "not judged":
-        drawings["control"] = records.control(row, evidence, n.zone)
+        drawings["control"], drawings["spread"] = records.control(row, evidence, n.zone)
         location, spread = CHART_WORDS[evidence["chart"]]
         pictures["control"] = _control_caption(row, evidence, location, n)
-        if drawings_of_spread := records.spread(evidence, n.zone):
-            drawings["spread"] = drawings_of_spread
-            beyond = sum(rule == "spread" for rule in evidence["signal_rule"])
-            pictures["spread"] = f"The {spread} of each subgroup with its control limits; {n.count(beyond)} beyond them."
+        beyond = sum(rule == "spread" for rule in evidence["signal_rule"])
+        pictures["spread"] = f"The {spread} of each subgroup with its control limits; {n.count(beyond)} beyond them."
     if evidence is not None:
         drawings["histogram"] = records.histogram(row, evidence)
         pictures["histogram"] = _histogram_caption(row, n)

@@ -49,7 +49,13 @@ def context(data: PageData, rows: list[dict[str, Any]], n: Numbers) -> dict[str,
 
 
 def card(row: dict[str, Any], n: Numbers, prefix: str) -> dict[str, Any]:
-    """One proposal with its reasons, its doubts and its picture."""
+    """One proposal with its picture."""
+    told = proposal(row, n)
+    return {**told, "picture": charts.svg("card", records.centering(row), told["caption"], prefix)}
+
+
+def proposal(row: dict[str, Any], n: Numbers) -> dict[str, Any]:
+    """One proposal with its reasons and its doubts."""
     caption = (
         f"Now and with the mean moved, between the specification limits; the shaded band holds the means that reach "
         f"{n.index(row['target_cpk'])}."
@@ -57,11 +63,11 @@ def card(row: dict[str, Any], n: Numbers, prefix: str) -> dict[str, Any]:
     return {
         **line(row, n),
         "move": wording.move_sentence(row, n),
+        "least": wording.least_sentence(row, n),
         "gain": wording.gain_sentence(row, n),
         "believe": wording.believe(row, n),
         "cautions": wording.cautions(row, n),
         "critical": row["class"] in wording.SAFETY_CLASSES,
-        "picture": charts.svg("card", records.centering(row), caption, prefix),
         "caption": caption,
     }
 

@@ -6,7 +6,7 @@ from typing import TYPE_CHECKING, Any
 
 from portfolio.publishing import charts, records, wording
 from portfolio.publishing.numbers import Numbers, missing
-from portfolio.publishing.page_first import alarms, card
+from portfolio.publishing.page_first import alarms, proposal
 
 if TYPE_CHECKING:
     from portfolio.publishing.pages import PageData
@@ -25,12 +25,12 @@ def context(data: PageData, rows: list[dict[str, Any]], n: Numbers) -> dict[str,
 
 
 def _sheet(row: dict[str, Any], evidence: dict[str, Any] | None, n: Numbers, i: int) -> dict[str, Any]:
-    out = card(row, n, f"m{i}-")
+    out = proposal(row, n)
     out["stability"] = wording.stability_sentence(row, n)
     out["capability"] = wording.capability_sentence(row, n)
     out["control"] = out["histogram"] = None
     if evidence is not None:
-        out["control"] = charts.svg("control", records.control(row, evidence, n.zone), "Location over time with control limits", f"c{i}-")
+        out["control"] = charts.svg("control", records.control(row, evidence, n.zone)[0], "Location over time with control limits", f"c{i}-")
         out["histogram"] = charts.svg("histogram", records.histogram(row, evidence), "Values against the specification limits", f"h{i}-")
     out["centering"] = charts.svg("centering", records.centering(row), out["caption"], f"z{i}-")
     return out

@@ -11,6 +11,7 @@ import json
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass
 from functools import cache
+from pathlib import Path
 from typing import Any
 
 import jinja2
@@ -65,9 +66,11 @@ def collect(store: Store, run_id: int, plan: Plan) -> PageData:
     )
 
 
-def render(data: PageData, progress: Callable[[int, int], None] | None = None) -> Iterator[tuple[str, bytes]]:
-    """Every file of the issue, path inside the folder and content."""
-    kit = assets.collect()
+def render(
+    data: PageData, progress: Callable[[int, int], None] | None = None, issues: list[Path] | None = None
+) -> Iterator[tuple[str, bytes]]:
+    """Every file of the issue, path inside the folder and content. `issues` may lend their drawing script."""
+    kit = assets.collect(issues or [])
     n = Numbers(data.plan.report.decimal, data.plan.portfolio.timezone)
     rows = [dict(row, page=names.page(row["characteristic"])) for row in data.results.to_dict("records")]
     compared = sites.compare(data.results)

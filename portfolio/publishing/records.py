@@ -17,32 +17,30 @@ Row = Mapping[str, Any]
 Rows = dict[str, list[dict[str, Any]]]
 
 
-def control(row: Row, evidence: Row, zone: str) -> Rows:
-    """Location over time with its control limits; no specification value is among the rows."""
-    t = _times(evidence["taken"], zone)
-    flagged = _flagged(evidence, spread=False)
-    lower, upper = _each(evidence["location_lower"], t), _each(evidence["location_upper"], t)
-    centre = _digits(evidence["location_centre"])
-    limits = _constant_parts(t, lower, upper, [centre] * len(t))
-    change = [] if missing(row.get("since")) else [{"t": _times([row["since"]], zone)[0]}]
-    points = [
-        {"t": a, "v": _digits(v), "s": int(i in flagged)}
-        for i, (a, v) in enumerate(zip(t, list(evidence["location"]), strict=True))
-    ]
-    return {"points": points, "limits": limits, "change": change}
-
-
-def spread(evidence: Row, zone: str) -> Rows:
-    """Spread over time with its control limits."""
-    t = _times(evidence["taken"], zone)
-    flagged = _flagged(evidence, spread=True)
-    points = [
-        {"t": a, "v": _digits(v), "s": int(i in flagged)}
-        for i, (a, v) in enumerate(zip(t, list(evidence["spread"]), strict=True))
-        if not missing(v)
-    ]
-    sides = [_each(evidence[f"spread_{side}"], t) for side in ("lower", "upper", "centre")]
-    return {"spreads": points, "spreadlimits": _constant_parts(t, *sides)}
+def control(row: Row, evidence: Row, zone: str) -> tuple[Rows, Rows]:
+    """Location and spread over time with their control limits; no specification value is among the rows."""
+    t = local_milliseconds(evidence["taken"], zone)
+    m = len(t)
+    beyond, signalled = _flagged(evidence)
+    location = _column(evidence["location"])
+    limits = [_each(_column(evidence[f"location_{side}"]), m) for side in ("lower", "upper")]
+    centre = [_digits(evidence["location_centre"])] * m
+    change = [] if missing(row.get("since")) else [{"t": local_milliseconds([row["since"]], zone)[0]}]
+    spread = _column(evidence["spread"])
+    around = [_each(_column(evidence[f"spread_{side}"]), m) for side in ("lower", "upper", "centre")]
+    return (
+        {
+            "points": [{"t": a, "v": v, "s": int(i in signalled)} for i, (a, v) in enumerate(zip(t, location, strict=True))],
+            "limits": _constant_parts(t, *limits, centre),
+            "change": change,
+        },
+        {
+            "spreads": [
+                {"t": a, "v": v, "s": int(i in beyond)} for i, (a, v) in enumerate(zip(t, spread, strict=True)) if v is not None
+            ],
+            "spreadlimits": _constant_parts(t, *around),
+        },
+    )
 
 
 def histogram(row: Row, evidence: Row) -> Rows:
@@ -87,7 +85,7 @@ def marks(row: Row) -> list[dict[str, Any]]:
 def history(rows: pd.DataFrame, target: float, zone: str) -> Rows:
     """The index of earlier judgements with its bounds."""
     kept = rows[rows["index"].notna()]
-    t = _times(kept["as_of"], zone)
+    t = local_milliseconds(kept["as_of"], zone)
     return {
         "history": [
             {"t": a, "v": _digits(v), "l": _digits(low), "u": _digits(high)}
@@ -110,22 +108,35 @@ def overview(results: pd.DataFrame, target: float) -> Rows:
     }
 
 
-def _flagged(evidence: Row, *, spread: bool) -> set[int]:
-    return {
-        int(i) for i, rule in zip(evidence["signal_index"], evidence["signal_rule"], strict=True) if (rule == "spread") == spread
-    }
-
-
-def _times(moments: Any, zone: str) -> list[int]:
+def local_milliseconds(moments: Any, zone: str) -> list[int]:
     """Local clock time as milliseconds, so that the axis shows the plant's day."""
     stamps = pd.DatetimeIndex(np.asarray(moments, dtype="datetime64[us]")).tz_localize("UTC").tz_convert(ZoneInfo(zone))
-    return [int(v) for v in stamps.tz_localize(None).astype("datetime64[ms]").astype(np.int64)]
+    return list((stamps.tz_localize(None).asi8 // 1000).tolist())
 
 
-def _each(values: Any, t: list[int]) -> list[float]:
+def _flagged(evidence: Row) -> tuple[set[int], set[int]]:
+    """Subgroups beyond the spread limits, and those with a signal of the location."""
+    beyond: set[int] = set()
+    signalled: set[int] = set()
+    for i, rule in zip(evidence["signal_index"], evidence["signal_rule"], strict=True):
+        (beyond if rule == "spread" else signalled).add(int(i))
+    return beyond, signalled
+
+
+def _column(values: Any) -> list[float | None]:
+    """Numbers of one picture to six digits of the largest; None where there is none."""
+    x = np.asarray(values, dtype=np.float64)
+    there = np.isfinite(x)
+    if not there.any():
+        return [None] * len(x)
+    largest = float(np.abs(x[there]).max())
+    rounded = np.round(x, 5 - math.floor(math.log10(largest))) if largest else x
+    return [v if ok else None for v, ok in zip(rounded.tolist(), there.tolist(), strict=True)]
+
+
+def _each(values: list[float | None], m: int) -> list[float | None]:
     """A limit for every subgroup; a single one counts for all."""
-    flat = [_digits(v) for v in values]
-    return flat * len(t) if len(flat) == 1 else flat
+    return values * m if len(values) == 1 else values
 
 
 def _constant_parts(t: list[int], lower: list[Any], upper: list[Any], centre: list[Any]) -> list[dict[str, Any]]:

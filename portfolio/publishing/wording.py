@@ -91,6 +91,14 @@ def move_sentence(row: Row, n: Numbers = PLAIN) -> str:
     return text + "."
 
 
+def least_sentence(row: Row, n: Numbers = PLAIN) -> str:
+    """Where to, and the least move that is enough: stands below the action."""
+    text = f"From {n.quantity(row['mean'], row['unit'], row['sigma_total'])} to {n.quantity(row['aim'], row['unit'], row['sigma_total'])}"
+    if not missing(row["move_least"]) and abs(row["move_least"]) > 0:
+        text += f"; {n.quantity(abs(row['move_least']), row['unit'], row['sigma_total'])} is the least that is enough"
+    return text + "."
+
+
 def gain_sentence(row: Row, n: Numbers = PLAIN) -> str:
     """What a move brings: index, chance, parts, money."""
     target = n.index(row["target_cpk"])
