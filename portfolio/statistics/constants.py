@@ -61,7 +61,7 @@ def _range_factors(n: int) -> tuple[float, float, float]:
         """P(range > w): 1 - n times the integral of phi(x) (Phi(x + w) - Phi(x))^(n - 1)."""
         density = np.exp(-0.5 * x**2) / np.sqrt(2 * np.pi)
         inner = (ndtr(x[:, None] + w) - ndtr(x)[:, None]) ** (n - 1)
-        return 1 - n * (wx * density) @ inner
+        return np.asarray(1 - n * (wx * density) @ inner)
 
     w, ww = (node + 1) * REACH, weight * REACH  # ranges up to 20 sigma
     tail = exceeds(w)

@@ -54,29 +54,30 @@ def form(time: Ints, label: Ints, start: Ints, size: Ints, minutes: Floats) -> S
     """
     n = np.diff(start)
     owner = ragged.owners(start)
-    position = np.arange(start[-1]) - start[:-1][owner]
     labelled = ragged.sums(label >= 0, start) > 0
     timed = ~labelled & np.isfinite(minutes)
     blocked = ~labelled & ~timed & (size > 1)
-
-    same_stamp = np.zeros(len(time), dtype=bool)
-    same_stamp[1:] = (time[1:] == time[:-1]) & (owner[1:] == owner[:-1])
-    shared = same_stamp.copy()
-    shared[:-1] |= same_stamp[1:]
-    stamped = ~labelled & ~timed & ~blocked & (size != 1) & (2 * ragged.sums(shared, start) > n)
+    undeclared = ~labelled & ~timed & ~blocked & (size != 1)
 
     fresh = np.ones(len(time), dtype=bool)
-    here = labelled[owner]
-    fresh[1:][here[1:]] = ((label[1:] != label[:-1]) | (label[1:] < 0))[here[1:]]
-    here = timed[owner]
-    if here.any():
-        slot = np.zeros(len(time), dtype=np.int64)
-        slot[here] = np.floor(time[here] / (minutes[owner[here]] * MINUTE)).astype(np.int64)
-        fresh[1:][here[1:]] = (slot[1:] != slot[:-1])[here[1:]]
-    here = blocked[owner]
-    fresh[here] = position[here] % size[owner[here]] == 0
-    here = stamped[owner]
-    fresh[here] = ~same_stamp[here]
+    if labelled.any():
+        here = np.flatnonzero(labelled[owner])
+        fresh[here] = (label[here] != label[here - 1]) | (label[here] < 0)
+    if timed.any():
+        here = np.flatnonzero(timed[owner])
+        length = np.maximum(np.rint(minutes[owner[here]] * MINUTE).astype(np.int64), 1)
+        # Whole microseconds: a value on the hour belongs to the hour that begins.
+        fresh[here] = time[here] // length != time[here - 1] // length
+    if blocked.any():
+        here = np.flatnonzero(blocked[owner])
+        fresh[here] = (here - start[owner[here]]) % size[owner[here]] == 0
+    if undeclared.any():
+        same = np.zeros(len(time), dtype=bool)
+        same[1:] = (time[1:] == time[:-1]) & (owner[1:] == owner[:-1])
+        shared = same.copy()
+        shared[:-1] |= same[1:]
+        stamped = undeclared & (2 * ragged.sums(shared, start) > n)
+        fresh &= ~(same & stamped[owner])
     fresh[start[:-1][n > 0]] = True
 
     first = np.flatnonzero(fresh)
