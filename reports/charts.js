@@ -47,6 +47,43 @@
     });
   };
 
+  /* The numbers of a picture as a table, made when somebody opens it. */
+  const when = (t) => new Date(t).toISOString().slice(0, 16).replace("T", " ");
+  const limitAt = (limits, t) => limits.filter((limit) => limit.t <= t).pop() || limits[0] || {};
+  const tables = {
+    control: (own) => [["Time", "Value", "Lower control limit", "Upper control limit", "Signal"], own.points.map((p) => {
+      const limit = limitAt(own.limits, p.t);
+      return [when(p.t), p.v, limit.l, limit.u, p.s ? "yes" : ""];
+    })],
+    histogram: (own) => [["From", "To", "Values"], own.bins.map((bin) => [bin.x, bin.b, bin.n])],
+    history: (own) => [["Judged up to", "Index", "Lower bound", "Upper bound"], own.history.map((h) => [when(h.t), h.v, h.l, h.u])],
+  };
+  for (const details of document.querySelectorAll("details[data-table]")) {
+    details.addEventListener("toggle", () => {
+      const own = rows[details.dataset.table];
+      if (!details.open || !own || details.querySelector("table")) return;
+      const [heads, lines] = tables[details.dataset.table](own);
+      const table = document.createElement("table");
+      const row = (cells, tag) => {
+        const tr = document.createElement("tr");
+        for (const text of cells) {
+          const cell = document.createElement(tag);
+          if (tag === "th") cell.scope = "col";
+          cell.className = "number";
+          cell.textContent = text === null || text === undefined ? "" : String(text);
+          tr.append(cell);
+        }
+        return tr;
+      };
+      table.createTHead().append(row(heads, "th"));
+      table.createTBody().append(...lines.map((cells) => row(cells, "td")));
+      const scroll = document.createElement("div");
+      scroll.className = "scroll";
+      scroll.append(table);
+      details.append(scroll);
+    });
+  }
+
   const all = () => Promise.all(figures.map(draw)).then(() => { document.body.dataset.ready = "yes"; });
   if (!embed || !templates) {
     for (const figure of figures) {

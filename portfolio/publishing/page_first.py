@@ -31,7 +31,7 @@ def context(data: PageData, rows: list[dict[str, Any]], n: Numbers) -> dict[str,
         "cards": [card(row, n, f"k{i}-") for i, row in enumerate(first)],
         "cells": {cell: n.count(counts[cell]) for cell in wording.CELL},
         "routes": [
-            {"route": route, "count": n.count(number), "text": wording.ROUTE[route]}
+            {"route": route, "number": n.count(number), "text": wording.ROUTE[route]}
             for route in ROUTES
             if (number := sum(row["route"] == route for row in rows))
         ],
@@ -130,7 +130,7 @@ def not_judged(rows: list[dict[str, Any]], n: Numbers) -> list[dict[str, str]]:
     why = Counter(
         row["capability_note"] or row["stability_note"] for row in rows if row["cell"] == "not judged"
     )
-    return [{"count": n.count(count), "why": wording.NOT_JUDGED.get(code, code)} for code, count in why.most_common()]
+    return [{"number": n.count(count), "why": wording.NOT_JUDGED.get(code, code)} for code, count in why.most_common()]
 
 
 def _headline(number: int) -> str:

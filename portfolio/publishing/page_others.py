@@ -24,7 +24,7 @@ def sites(compared: dict[str, Any], n: Numbers) -> dict[str, Any]:
             "judged": n.count(row["judged"]),
             "cells": [
                 {
-                    "count": n.count(row["counts"][cell]),
+                    "number": n.count(row["counts"][cell]),
                     "share": n.percent(row["shares"][cell][0]),
                     "interval": f"{n.percent(row['shares'][cell][1])} to {n.percent(row['shares'][cell][2])}",
                 }
@@ -76,7 +76,7 @@ def quality(data: PageData, rows: list[dict[str, Any]], n: Numbers) -> dict[str,
                 "source": row["source"],
                 "status": pull.get("status", "not pulled"),
                 "pulled": n.time(pull.get("pulled_at")),
-                "items": n.count(row["items"]),
+                "files": n.count(row["items"]),
                 "read": n.count(row["rows_read"]),
                 "new": n.count(row["rows_new"]),
                 "known": n.count(row["rows_known"]),
@@ -93,11 +93,11 @@ def quality(data: PageData, rows: list[dict[str, Any]], n: Numbers) -> dict[str,
         "sources": sources,
         "never": [{"source": pull["source"], "status": pull["status"], "message": pull["message"] or ""} for pull in never],
         "reasons": [
-            {"source": r["source"], "reason": r["reason"], "rows": n.count(r["rows"]), "items": n.count(r["items"]), "example": r["example"]}
+            {"source": r["source"], "reason": r["reason"], "rows": n.count(r["rows"]), "files": n.count(r["items"]), "example": r["example"]}
             for r in data.rejected.to_dict("records")
         ],
         "refused": [{"source": r["source"], "item": r["item"], "reason": r["reason"]} for r in data.refused.to_dict("records")],
-        "unregistered": [{"name": r["name"], "count": n.count(r["measurements"])} for r in data.unregistered.to_dict("records")],
+        "unregistered": [{"name": r["name"], "number": n.count(r["measurements"])} for r in data.unregistered.to_dict("records")],
         "why": not_judged(rows, n),
         "unjudged": [
             {
@@ -105,7 +105,7 @@ def quality(data: PageData, rows: list[dict[str, Any]], n: Numbers) -> dict[str,
                 "page": row["page"],
                 "site": "" if missing(row["site"]) else row["site"],
                 "why": wording.NOT_JUDGED.get(row["capability_note"] or row["stability_note"], ""),
-                "values": n.count(row["window_measurements"]),
+                "held": n.count(row["window_measurements"]),
                 "last": n.date(row["last"]),
             }
             for row in rows
@@ -129,7 +129,7 @@ def changes(data: PageData, rows: list[dict[str, Any]], n: Numbers) -> dict[str,
                 "note": change["note"] or "",
                 "since": "no longer registered" if row is None else wording.CELL[row["cell"]],
                 "index": "" if row is None or missing(row["index"]) else f"{row['index_name']} {n.index(row['index'])}",
-                "values": "" if row is None else n.count(row["measurements"]),
+                "held": "" if row is None else n.count(row["measurements"]),
             }
         )
     return {"logged": out}
