@@ -6,14 +6,13 @@ import numpy as np
 import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
-from scipy import integrate, stats
+from scipy import stats
 
 from portfolio.statistics import capability
-
+from tests.statistics.integrated import CHANCE, integrated
 from tests.statistics.worked import CASES, limits, near, one
 
 NORMAL = ("W01", "W02", "W03", "W07", "W11")
-CHANCE = 0.0012  # the measured error of 160 nodes (capability study, section 1)
 
 
 def _case(name):
@@ -24,21 +23,6 @@ def _case(name):
         values, lower, upper, answer = np.log(values), np.log(lower), np.log(upper), answer["log_scale"]
     data = one(values.mean(), values.std(ddof=1), len(values), len(values) - 1, lower, upper)
     return data, answer, case["target_Cpk"]
-
-
-def integrated(mean, sigma, n, df, lower, upper, target):
-    """P(Cpk >= target) by adaptive integration over sigma: an implementation of its own, nothing shared."""
-
-    def given_ratio(r):  # r = s / sigma, r^2 df ~ chi-square
-        true = sigma / r
-        low = -np.inf if np.isinf(lower) else (lower + 3 * target * true - mean) / true * np.sqrt(n)
-        high = np.inf if np.isinf(upper) else (upper - 3 * target * true - mean) / true * np.sqrt(n)
-        density = 2 * r * df * stats.chi2.pdf(df * r * r, df)
-        return density * max(0.0, stats.norm.cdf(high) - stats.norm.cdf(low))
-
-    ends = np.sqrt(stats.chi2.ppf([1e-14, 1 - 1e-14], df) / df)
-    middle = np.linspace(*ends, 41)
-    return sum(integrate.quad(given_ratio, a, b)[0] for a, b in zip(middle[:-1], middle[1:], strict=True))
 
 
 @pytest.mark.parametrize("name", (*NORMAL, "W09"))
@@ -123,6 +107,18 @@ def test_bounds_lie_within_0_007_of_bissell_for_30_to_60_values():
     quick = capability.bissell_bounds(c, n, n - 1)
     assert np.max(np.abs(low - quick[0])) < 0.007
     assert np.max(np.abs(high - quick[1])) < 0.008
+
+
+def test_the_expected_ppm_is_the_plugged_in_one_averaged_over_what_the_data_leave_open():
+    """Guttman (1970), by drawing sigma and mean from their posterior."""
+    rng = np.random.default_rng(5)
+    draws, mean, s, n, df, lower, upper = 400_000, 0.4, 1.0, 20.0, 16.5, -3.5, 3.0
+    sigma = s * np.sqrt(df / rng.chisquare(df, draws))
+    centre = mean + sigma / np.sqrt(n) * rng.normal(size=draws)
+    drawn = capability.plugin_ppm(centre, sigma, np.full(draws, lower), np.full(draws, upper))
+    expected = capability.expected_ppm(*one(mean, s, n, df, lower, upper))[0]
+    assert expected == pytest.approx(drawn.mean(), abs=4 * drawn.std() / np.sqrt(draws))
+    assert expected > capability.plugin_ppm(*one(mean, s, lower, upper))[0]
 
 
 def test_no_data_no_spread_no_limits_and_crossed_limits_give_no_number():

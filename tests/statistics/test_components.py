@@ -13,7 +13,6 @@ from statsmodels.stats.anova import anova_lm
 
 from portfolio.statistics.components import Components, components
 from portfolio.statistics.subgroups import Subgroups
-
 from tests.statistics.worked import CASES, near
 
 
@@ -23,7 +22,8 @@ def split(groups, streams=None, serial=None):
     stream = np.full(len(values), -1) if streams is None else np.concatenate([np.asarray(s) for s in streams])
     start = np.cumsum([0, *(len(g) for g in groups)])
     cut = Subgroups(start, np.array([0, len(groups)]))
-    return components(values, np.array([0, len(values)]), cut, stream, serial=None if serial is None else np.array([serial]))  # fmt: skip
+    leaning = None if serial is None else np.array([serial])
+    return components(values, np.array([0, len(values)]), cut, stream, serial=leaning)
 
 
 def frame(groups, streams):
@@ -108,7 +108,7 @@ def test_uneven_crossed_streams_are_tested_as_statsmodels_does(seed):
 
 
 def test_streams_that_own_their_subgroups_are_compared_with_what_subgroups_vary_by():
-    """Nested and balanced: F = MS stream / MS subgroup within stream (any textbook, e.g. Montgomery, DOE, chapter 14)."""
+    """Nested and balanced: F = MS stream / MS subgroup within stream (common practice)."""
     rng = np.random.default_rng(5)
     labels = [np.full(4, j % 3) for j in range(15)]
     groups = [0.5 * (j % 3) + shift + rng.normal(size=4) for j, shift in enumerate(rng.normal(size=15))]
