@@ -50,7 +50,7 @@ def form(time: Ints, label: Ints, start: Ints, size: Ints, minutes: Floats) -> S
         subgroup is a run of equal labels, and a value without label among labelled ones stands alone
     start : (K + 1,) starts of the characteristics
     size : (K,) declared size, 0 where none; blocks of so many values, the last may be smaller
-    minutes : (K,) declared length of a clock slot (counted from midnight UTC), NaN where none
+    minutes : (K,) declared length of a clock slot (counted from 1970-01-01, 0:00 UTC), NaN where none
     """
     n = np.diff(start)
     owner = ragged.owners(start)
