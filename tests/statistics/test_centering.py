@@ -153,7 +153,7 @@ def test_characteristics_do_not_influence_each_other_and_may_come_in_any_order()
         assert getattr(shuffled, name) == pytest.approx(value[order], rel=1e-9, abs=1e-12, nan_ok=True), name
 
 
-@settings(max_examples=40, deadline=None)
+@settings(max_examples=40, deadline=None, derandomize=True)
 @given(seed=st.integers(0, 10**6), off=st.floats(-50, 50), scale=st.floats(0.01, 100))
 def test_shift_and_scale_move_the_window_and_change_no_chance(seed, off, scale):
     data = _portfolio(np.random.default_rng(seed), 6)
@@ -171,7 +171,7 @@ def test_shift_and_scale_move_the_window_and_change_no_chance(seed, off, scale):
         assert getattr(moved, name) == pytest.approx(expected, rel=1e-6, abs=1e-5 * scale, nan_ok=True), name
 
 
-@settings(max_examples=40, deadline=None)
+@settings(max_examples=40, deadline=None, derandomize=True)
 @given(seed=st.integers(0, 10**6))
 def test_centring_never_lowers_the_index_and_the_least_move_is_never_longer_than_the_whole(seed):
     found = centering.centre(*(data := _portfolio(np.random.default_rng(seed), 20)))
