@@ -202,9 +202,10 @@ def _estimate(
             + (weight_e * var_e) ** 2 / np.where(layered, df_e, freedom)
             + ((a - 1) * noise**2 + 2 * noise * n * stream) / n**2
         )
-        df = np.where(total > 0, total**2 / uncertain, freedom)
+        mixed = (layered | (a > 1)) & (total > 0)  # elsewhere whole numbers stay whole
+        df = np.where(mixed, total**2 / uncertain, freedom)
         of_mean = (var_b * k_b + var_e) * longer / n
-        n_mean = np.where(of_mean > 0, total / of_mean, n / longer)
+        n_mean = np.where(mixed & (of_mean > 0), total / of_mean, n / longer)
 
         tested = design.layered & (df_e > 0) & (df_b > 0)
         between_p = np.where(tested, stats.f.sf(between / df_b / mse, df_b, df_e), np.nan)
