@@ -194,9 +194,9 @@ def status(plan: PlanFile = DEFAULT_PLAN, as_json: AsJson = False) -> None:
 
     Example: portfolio status plan.toml
     """
-    from portfolio import job
+    from portfolio import inquiry
 
-    facts = job.status(_plan(plan))
+    facts = inquiry.status(_plan(plan))
     if as_json:
         print(json.dumps(facts, indent=1))
         return
@@ -219,9 +219,9 @@ def explain(
 
     Example: portfolio explain plan.toml "shaft 12 diameter"
     """
-    from portfolio import job
+    from portfolio import inquiry
 
-    told = job.explain(_plan(plan), characteristic)
+    told = inquiry.explain(_plan(plan), characteristic)
     if as_json:
         print(
             json.dumps({"paragraphs": told.paragraphs, "facts": told.facts}, indent=1, default=str, ensure_ascii=False)
@@ -247,9 +247,9 @@ def rejected(
     Example: portfolio rejected plan.toml --export rejected.csv
     """
     from portfolio import export as formats
-    from portfolio import job
+    from portfolio import inquiry
 
-    rows = job.rejected(_plan(plan))
+    rows = inquiry.rejected(_plan(plan))
     if export is not None:
         export.write_bytes(formats.csv_bytes(rows))
         print(f"wrote {export} ({len(rows)} rows)")
@@ -274,20 +274,19 @@ def log(
 
     Example: portfolio log plan.toml "shaft 12 diameter" --kind re-centred --at 2026-06-01T10:00 --note "offset -0.02"
     """
-    from portfolio import job
+    from portfolio import inquiry, upkeep
+    from portfolio.session import nearest
 
     loaded = _plan(plan)
     if characteristic is None:
-        for row in job.changes(loaded).itertuples():
+        for row in inquiry.changes(loaded).itertuples():
             print(f"{row.changed_at:%Y-%m-%d %H:%M} UTC  {row.characteristic}  {row.kind}  {row.note or ''}")
         return
     known = _registry(loaded).units()
     if characteristic not in known:
-        raise UsageError(
-            f"no characteristic {characteristic!r} in the registry.{job.nearest(characteristic, list(known))}"
-        )
+        raise UsageError(f"no characteristic {characteristic!r} in the registry.{nearest(characteristic, list(known))}")
     moment = _moment(at, loaded, whole_day=False) or datetime.now(UTC)
-    job.log_change(loaded, characteristic, kind, moment, note, by)
+    upkeep.log_change(loaded, characteristic, kind, moment, note, by)
     print(f"recorded: {characteristic}, {kind}, {moment:%Y-%m-%d %H:%M} UTC")
 
 
@@ -300,9 +299,9 @@ def export(
 
     Example: portfolio export plan.toml out
     """
-    from portfolio import job
+    from portfolio import inquiry
 
-    for path in job.export(_plan(plan), folder):
+    for path in inquiry.export(_plan(plan), folder):
         print(f"wrote {path}")
 
 
@@ -315,9 +314,9 @@ def backup(
 
     Example: portfolio backup plan.toml backup/monday.duckdb
     """
-    from portfolio import job
+    from portfolio import upkeep
 
-    job.back_up(_plan(plan), file)
+    upkeep.back_up(_plan(plan), file)
     print(f"wrote {file}")
 
 
@@ -330,10 +329,10 @@ def restore(
 
     Example: portfolio restore plan.toml backup/monday.duckdb
     """
-    from portfolio import job
+    from portfolio import upkeep
 
     loaded = _plan(plan)
-    job.restore(loaded, file)
+    upkeep.restore(loaded, file)
     print(f"restored {loaded.store_path} from {file}")
 
 

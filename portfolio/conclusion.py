@@ -11,8 +11,9 @@ import pandas as pd
 
 from portfolio.judgement import DAY, STABILITY_FIELDS, Window
 from portfolio.plan import Judgement
-from portfolio.result import CAPABLE, NOT_CAPABLE, NOT_JUDGED, STABLE, UNSTABLE
+from portfolio.result import NOT_JUDGED, STABLE, UNSTABLE
 from portfolio.statistics import capability, discoveries, stability
+from portfolio.statistics.ragged import Bools, Floats
 
 FAR_OUTSIDE = 1.0
 "Widths of the tolerance between mean and nearest limit from which the limits or the unit are suspected first."
@@ -75,7 +76,7 @@ def _conclude_stability(out: pd.DataFrame, registry: pd.DataFrame, window: Windo
         out[f"p_{part}"] = getattr(found, f"p_{part}")
 
 
-def _no_extremes() -> dict[str, np.ndarray]:  # type: ignore[type-arg]
+def _no_extremes() -> dict[str, np.ndarray]:
     """The flat arrays of isolated extremes stay with their shard; the verdict does not need them."""
     empty = np.empty(0, dtype=np.int64)
     return {"extreme_of": empty, "extreme_index": empty}
@@ -106,7 +107,7 @@ def _conclude_capability(out: pd.DataFrame, registry: pd.DataFrame, settings: Ju
     out["shape"] = np.where(judged, "normal", "")
 
 
-def _why_not(out: pd.DataFrame, registry: pd.DataFrame, settings: Judgement) -> np.ndarray:  # type: ignore[type-arg]
+def _why_not(out: pd.DataFrame, registry: pd.DataFrame, settings: Judgement) -> np.ndarray:
     """Code of the first reason that forbids a capability verdict, '' where there is none."""
     lower, upper = registry["lsl"].to_numpy(dtype=np.float64), registry["usl"].to_numpy(dtype=np.float64)
     sigma, mean = out["sigma_total"].to_numpy(), out["mean"].to_numpy()
@@ -136,7 +137,7 @@ def _why_not(out: pd.DataFrame, registry: pd.DataFrame, settings: Judgement) -> 
     return note
 
 
-def _far_outside(out: pd.DataFrame, mean, lower, upper) -> np.ndarray:  # type: ignore[type-arg,no-untyped-def]
+def _far_outside(out: pd.DataFrame, mean: Floats, lower: Floats, upper: Floats) -> Bools:
     """Every value outside, and so far that a wrong limit or unit is likelier than a wrong process."""
     with np.errstate(invalid="ignore", divide="ignore"):
         distance = np.fmax(lower - mean, mean - upper)
@@ -145,6 +146,3 @@ def _far_outside(out: pd.DataFrame, mean, lower, upper) -> np.ndarray:  # type: 
         ratio = np.abs(mean / limit)
         one = (np.isnan(lower) | np.isnan(upper)) & ((ratio > FAR_RATIO) | (ratio < 1 / FAR_RATIO))
     return out["all_outside"].to_numpy() & (two | one)
-
-
-CAPABILITY_VERDICTS = (CAPABLE, NOT_CAPABLE, NOT_JUDGED)

@@ -102,12 +102,12 @@ def write(folder: Path, *, ending: date | None = None, seed: int = SEED) -> Demo
 
 def log_changes(plan: Plan) -> int:
     """Record the changes that lie beside a demo plan; repeating it changes nothing."""
-    from portfolio import job
+    from portfolio import upkeep
 
     rows = pd.read_csv(plan.folder / "changes.csv")
     for row in rows.itertuples():
         moment = datetime.fromisoformat(str(row.changed_at)).replace(tzinfo=ZoneInfo(ZONE))
-        job.log_change(plan, str(row.characteristic), str(row.kind), moment, str(row.note), "setter")
+        upkeep.log_change(plan, str(row.characteristic), str(row.kind), moment, str(row.note), "setter")
     return len(rows)
 
 
@@ -169,7 +169,9 @@ def _write_harbour(folder: Path, values: pd.DataFrame, start: datetime) -> None:
     (folder / "week-08-sent-again.csv").write_text(copied, encoding="utf-8", newline="")
     mended = rows[(rows["feature"] == first) & (week == 9)].head(3).copy()
     mended["result"] = [f"{float(value) + 0.001:.3f}" for value in mended["result"]]
-    (folder / "week-14-corrections.csv").write_text(mended.to_csv(index=False, lineterminator="\n"), encoding="utf-8", newline="")
+    (folder / "week-14-corrections.csv").write_text(
+        mended.to_csv(index=False, lineterminator="\n"), encoding="utf-8", newline=""
+    )
 
 
 def _at(start: datetime, day: int) -> str:
@@ -215,9 +217,11 @@ def _write_quarry(folder: Path, values: pd.DataFrame) -> None:
 def _write_registry(path: Path, processes: list[Process], start: datetime) -> None:
     rows = []
     for process in processes:
-        row: dict[str, Any] = {name: "" for name in COLUMNS}
+        row: dict[str, Any] = dict.fromkeys(COLUMNS, "")
         row.update(process.registered)
-        row.update(characteristic=process.name, site=process.site, unit=process.unit, resolution=_plain(process.resolution))
+        row.update(
+            characteristic=process.name, site=process.site, unit=process.unit, resolution=_plain(process.resolution)
+        )
         if process.scenario == "new limits":
             earlier = dict(row)
             earlier.update(lsl=_plain(float(row["lsl"]) - process.sigma), usl=_plain(float(row["usl"]) + process.sigma))
@@ -238,7 +242,9 @@ def _write_changes(path: Path, processes: list[Process], start: datetime) -> Non
     logged = [process for process in processes if process.scenario == "re-centred"]
     lines = ["characteristic,changed_at,kind,note"]
     for process in logged:
-        lines.append(f"{process.name},{start + timedelta(days=process.change_day):%Y-%m-%dT%H:%M},re-centred,offset corrected")
+        lines.append(
+            f"{process.name},{start + timedelta(days=process.change_day):%Y-%m-%dT%H:%M},re-centred,offset corrected"
+        )
     path.write_text("\n".join(lines) + "\n", encoding="utf-8")
 
 

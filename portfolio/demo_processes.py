@@ -144,7 +144,14 @@ COUNTS = {
     "leaning": 6, "re-centred": 3,
 }  # fmt: skip
 
-MACHINED = ("journal diameter", "bore diameter", "shoulder length", "groove width", "keyway depth", "thread pitch diameter")
+MACHINED = (
+    "journal diameter",
+    "bore diameter",
+    "shoulder length",
+    "groove width",
+    "keyway depth",
+    "thread pitch diameter",
+)
 MOULDED = ("wall thickness", "rim diameter", "clip width", "lid height", "stem diameter", "part mass")
 FAMILIES = ("flange bore", "hub length", "cover height", "ring width", "pin diameter", "seat depth")
 OWNERS = ("turning cell", "milling cell", "moulding shop", "filling hall", "laboratory")
@@ -170,9 +177,18 @@ def _one(scenario: str, index: int, number: int, rng: np.random.Generator) -> Pr
     if scenario == "leaning":
         return _bath(number, rng)
     moulded = scenario in ("cavities",) or (scenario not in ("flatness", "strength") and index % 3 == 2)
-    site = "Mill" if moulded else ("Quarry" if index % 3 == 1 and scenario in ("flatness", "strength", "layers") else "Harbour")
+    site = (
+        "Mill"
+        if moulded
+        else ("Quarry" if index % 3 == 1 and scenario in ("flatness", "strength", "layers") else "Harbour")
+    )
     feature = (MOULDED if moulded else MACHINED)[number % 6]
-    unit, nominal, sigma, resolution = "mm", float(rng.integers(8, 120)) / 2, float(rng.choice([0.004, 0.008, 0.02])), 0.001
+    unit, nominal, sigma, resolution = (
+        "mm",
+        float(rng.integers(8, 120)) / 2,
+        float(rng.choice([0.004, 0.008, 0.02])),
+        0.001,
+    )
     if feature == "part mass":
         unit, nominal, sigma, resolution = "g", float(rng.integers(20, 90)), 0.08, 0.01
     process = Process("", site, scenario, unit, nominal, sigma, resolution)

@@ -138,7 +138,7 @@ class FrameReader:
         )
 
 
-def _codes(column: pd.Series) -> Ints:  # type: ignore[type-arg]
+def _codes(column: pd.Series) -> Ints:
     """Text labels as whole numbers, -1 where there is none; equal labels get equal numbers."""
     codes, _ = pd.factorize(column.astype("string"), sort=True)
     return np.asarray(codes, dtype=np.int64)

@@ -20,7 +20,7 @@ RULES = {1: "1", 2: "2", 3: "3", 4: "4", 5: "spread"}
 
 
 def table(
-    names: np.ndarray,  # type: ignore[type-arg]
+    names: np.ndarray,
     values: Floats,
     start: Ints,
     groups: Subgroups,

@@ -14,6 +14,7 @@ from portfolio.judgement import Window
 from portfolio.plan import Judgement, Plan
 from portfolio.registry import Registry
 from portfolio.result import CONTRACT_COLUMNS
+from portfolio.session import newest, reading
 
 WEEK = 7 * 86_400_000_000
 
@@ -64,7 +65,7 @@ def judge(
         newest = values["taken_at"].max()
         until = (newest if pd.notna(newest) else pd.Timestamp(0)) + pd.Timedelta(1, "us")
     else:
-        until = pd.to_datetime(as_of, utc=True).tz_localize(None)  # type: ignore[call-overload]
+        until = pd.to_datetime(as_of, utc=True).tz_localize(None)
     end = int(np.datetime64(until, "us").astype(np.int64))
     first = values["taken_at"].min()
     begin = int(np.datetime64(first if pd.notna(first) else until, "us").astype(np.int64))
@@ -107,16 +108,12 @@ class Weekly:
     @property
     def runs(self) -> pd.DataFrame:
         """Every judgement that was made, oldest first."""
-        from portfolio import job
-
-        with job.reading(self.plan) as store:
+        with reading(self.plan) as store:
             return store.frame("judgement/runs")
 
     def _of_newest(self, query: str) -> pd.DataFrame:
-        from portfolio import job
-
-        with job.reading(self.plan) as store:
-            return store.frame(query, run_id=int(job.newest(store, self.plan)["run_id"]))
+        with reading(self.plan) as store:
+            return store.frame(query, run_id=int(newest(store, self.plan)["run_id"]))
 
 
 def open(plan: str | PathLike[str]) -> Weekly:

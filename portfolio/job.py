@@ -1,4 +1,4 @@
-"""The weekly job, step by step: pull, judge, publish; and the questions that the command line asks.
+"""The weekly job, step by step: pull, judge, publish.
 
 Each step takes the store's lock, does its work in transactions, and leaves the store checkpointed. A crash between
 two steps leaves the results of the finished ones; every step can be repeated without effect on what is done.
@@ -8,12 +8,10 @@ from __future__ import annotations
 
 import hashlib
 import time
-from collections.abc import Iterator
-from contextlib import AbstractContextManager, contextmanager, nullcontext
+from contextlib import AbstractContextManager, nullcontext
 from dataclasses import dataclass
 from datetime import UTC, datetime, timedelta
 from pathlib import Path
-from typing import TYPE_CHECKING
 from zoneinfo import ZoneInfo
 
 import numpy as np
@@ -21,23 +19,17 @@ import pandas as pd
 import pyarrow as pa
 
 from portfolio import engine, intake, triage
-from portfolio.errors import PublishError, StoreError, UsageError
+from portfolio.errors import PublishError, UsageError
 from portfolio.intake import SourceReport
 from portfolio.judgement import Measured, Window
-from portfolio.locks import hold
 from portfolio.plan import Plan
 from portfolio.registry import Registry
 from portfolio.result import CELLS
-from portfolio.store import Store, backup
-from portfolio.store import restore as restore_file
+from portfolio.session import newest, utc, writing
+from portfolio.store import Store
 from portfolio.store_reader import StoreReader
 from portfolio.terminal import Progress
 from portfolio.version import __version__
-
-if TYPE_CHECKING:
-    from portfolio.publishing.wording import Explanation
-
-CHANGE_KINDS = ("re-centred", "tool change", "gauge change", "new limits", "other")
 
 
 @dataclass(frozen=True)
@@ -88,7 +80,7 @@ def pull(
     plan: Plan, registry: Registry, *, progress: Progress | None = None, now: datetime | None = None
 ) -> PullReport:
     """Bring new measurements of every source into the store."""
-    moment = _utc(now)
+    moment = utc(now)
     with writing(plan) as store:
         _record_registry(store, registry, moment)
         units = registry.units()
@@ -107,10 +99,10 @@ def judge(
 ) -> JudgeReport:
     """Judge every characteristic of the registry over the window that ends at `as_of` (default now), and store it."""
     began = time.perf_counter()
-    until = _utc(as_of)
+    until = utc(as_of)
     since = until - timedelta(weeks=plan.portfolio.window_weeks)
     with writing(plan) as store:
-        version = _record_registry(store, registry, _utc(None))
+        version = _record_registry(store, registry, utc(None))
         rows = registry.as_of(until)
         if rows.empty:
             raise UsageError(f"{plan.registry_path}: no characteristic is valid at {until:%Y-%m-%d}. Check valid_from.")
@@ -150,7 +142,7 @@ def publish(plan: Plan, *, progress: Progress | None = None) -> PublishReport:
                 "judgement/mark_published",
                 run_id=int(run["run_id"]),
                 folder=issue.folder.name,
-                published_at=_utc(None),
+                published_at=utc(None),
             )
         store.checkpoint()
     index = plan.report_path / "index.html"
@@ -177,125 +169,6 @@ def run(
     return RunReport(pulled, judged, published)
 
 
-def explain(plan: Plan, characteristic: str) -> Explanation:
-    """The whole judgement of one characteristic in words, from the newest stored run."""
-    from portfolio.publishing import wording
-
-    with reading(plan) as store:
-        run = newest(store, plan)
-        row = store.frame(
-            "judgement/result_of_characteristic", run_id=int(run["run_id"]), characteristic=characteristic
-        )
-        if row.empty:
-            names = store.frame("judgement/results_of_run", run_id=int(run["run_id"]))["characteristic"].tolist()
-            raise UsageError(
-                f"no characteristic {characteristic!r} in the newest judgement.{nearest(characteristic, names)}"
-            )
-    return wording.explanation(row.to_dict("records")[0], plan)
-
-
-def export(plan: Plan, folder: Path) -> list[Path]:
-    """The newest judgement, its ranking and the history of the index as CSV, Parquet and JSON."""
-    from portfolio import export as formats
-    from portfolio.publishing import wording
-
-    with reading(plan) as store:
-        run_id = int(newest(store, plan)["run_id"])
-        judgement = store.frame("judgement/results_of_run", run_id=run_id)
-        ranking = store.frame("judgement/ranking_of_run", run_id=run_id)
-        history = store.frame("history/index_history", run_id=run_id)
-    judgement["reasons"] = [wording.reasons(row) for row in judgement.to_dict("records")]
-    return formats.write(folder, {"judgement": judgement, "ranking": ranking, "history": history})
-
-
-def rejected(plan: Plan) -> pd.DataFrame:
-    """Every row that was set aside, with source, file, line, column and reason."""
-    with reading(plan) as store:
-        return store.frame("history/rejected")
-
-
-def log_change(plan: Plan, characteristic: str, kind: str, at: datetime, note: str = "", by: str = "") -> None:
-    """Record a change made to a process; the next judgement starts a new stretch there."""
-    if kind not in CHANGE_KINDS:
-        raise UsageError(f"unknown kind of change {kind!r}. Use one of: {', '.join(CHANGE_KINDS)}.")
-    with writing(plan) as store, store.transaction():
-        store.run(
-            "history/log_change",
-            characteristic=characteristic,
-            changed_at=_utc(at),
-            kind=kind,
-            note=note,
-            logged_at=_utc(None),
-            logged_by=by,
-        )
-
-
-def changes(plan: Plan) -> pd.DataFrame:
-    """Logged changes, newest first."""
-    with reading(plan) as store:
-        return store.frame("history/changes")
-
-
-def back_up(plan: Plan, file: Path) -> None:
-    """A verified copy of the store."""
-    if not plan.store_path.exists():
-        raise StoreError(f"{plan.store_path} does not exist yet: there is nothing to copy.")
-    with hold(plan.store_path):
-        backup(plan.store_path, file)
-
-
-def restore(plan: Plan, file: Path) -> None:
-    """Put a copy in the place of the store."""
-    with hold(plan.store_path):
-        restore_file(file, plan.store_path)
-
-
-def status(plan: Plan) -> dict[str, object]:
-    """Last run, store size and what the last pull said of each source."""
-    with reading(plan) as store:
-        runs = store.frame("judgement/runs")
-        pulls = store.frame("history/last_pulls")
-        size = store.size()
-    last = runs.iloc[-1] if len(runs) else None
-    published = runs[runs["published_at"].notna() & runs["slot"].notna()]
-    return {
-        **_service(plan),
-        "last_slot": str(published["slot"].iloc[-1]) if len(published) else None,
-        "store": str(plan.store_path),
-        "store_bytes": size,
-        "judgements": len(runs),
-        "last_judged": None if last is None else _text(last["judged_at"]),
-        "last_as_of": None if last is None else _text(last["as_of"]),
-        "last_published": None if last is None else _text(last["published_at"]),
-        "newest_issue": None if last is None else (last["folder"] if isinstance(last["folder"], str) else None),
-        "sources": [
-            {
-                "source": row.source,
-                "status": row.status,
-                "pulled_at": _text(row.pulled_at),
-                "message": row.message or "",
-            }
-            for row in pulls.itertuples()
-        ],
-    }
-
-
-def _service(plan: Plan) -> dict[str, object]:
-    """Next times by the plan, and what the service last said of itself."""
-    from portfolio import schedule, slots
-
-    now, zone = _utc(None), plan.portfolio.timezone
-    health = schedule.read_health(plan)
-    beat = health.get("beat")
-    alive = beat is not None and now - datetime.fromisoformat(str(beat)) < timedelta(seconds=4 * schedule.BEAT_SECONDS)
-    upcoming = {
-        f"next_{name}": None if moment is None else moment.isoformat()
-        for name, cron in (("pull", plan.schedule.pull), ("publish", plan.schedule.publish))
-        for moment in (slots.following(cron, zone, now),)
-    }
-    return {"service": "running" if alive else "not running", "service_last_code": health.get("last_code"), **upcoming}
-
-
 def _save(
     store: Store,
     plan: Plan,
@@ -308,7 +181,7 @@ def _save(
     seconds: float,
 ) -> int:
     run_id, newest_load = store.rows("judgement/next_run")[0]
-    judged_at = _utc(None)
+    judged_at = utc(None)
     run = pd.DataFrame(
         [
             {
@@ -340,7 +213,7 @@ def _save(
     return int(run_id)
 
 
-def _stretches(store: Store, rows: pd.DataFrame, until: datetime, window: Window) -> np.ndarray:  # type: ignore[type-arg]
+def _stretches(store: Store, rows: pd.DataFrame, until: datetime, window: Window) -> np.ndarray:
     """Microseconds from which each characteristic is judged: its last logged change or new limits, else the window."""
     logged = store.frame("judgement/last_changes", as_of=until).set_index("characteristic")["changed_at"]
     change = rows["characteristic"].map(logged).fillna(window.since).to_numpy(dtype=np.int64)
@@ -359,41 +232,6 @@ def _record_registry(store: Store, registry: Registry, now: datetime) -> int:
     return int(known[0][0])
 
 
-def newest(store: Store, plan: Plan) -> dict[str, object]:
-    """The newest judgement; `UsageError` when there is none."""
-    runs = store.frame("judgement/newest_run")
-    if runs.empty:
-        raise UsageError(f"{plan.store_path.name} holds no judgement yet. Run: portfolio run {plan.path}")
-    return dict(runs.to_dict("records")[0])
-
-
-@contextmanager
-def writing(plan: Plan) -> Iterator[Store]:
-    """The store, locked and open for writing."""
-    plan.store_path.parent.mkdir(parents=True, exist_ok=True)
-    with hold(plan.store_path), _open(plan, read_only=False) as store:
-        yield store
-
-
-@contextmanager
-def reading(plan: Plan) -> Iterator[Store]:
-    """The store, locked and open for reading."""
-    if not plan.store_path.exists():
-        raise StoreError(f"{plan.store_path} does not exist yet. Run: portfolio run {plan.path}")
-    with hold(plan.store_path), _open(plan, read_only=True) as store:
-        yield store
-
-
-def _open(plan: Plan, *, read_only: bool) -> Store:
-    return Store.open(
-        plan.store_path,
-        read_only=read_only,
-        memory=plan.limits.memory,
-        threads=plan.limits.threads,
-        temporary_folder=None if plan.limits.temporary_folder is None else plan.folder / plan.limits.temporary_folder,
-    )
-
-
 def _stage(progress: Progress | None, name: str) -> AbstractContextManager[None]:
     return nullcontext() if progress is None else progress.stage(name)
 
@@ -403,32 +241,10 @@ def _counted(progress: Progress | None) -> engine.Progress | None:
 
 
 def _week(as_of: object, plan: Plan) -> str:
-    local = pd.Timestamp(as_of).tz_localize(UTC).astimezone(ZoneInfo(plan.portfolio.timezone))  # type: ignore[arg-type]
+    local = pd.Timestamp(as_of).tz_localize(UTC).astimezone(ZoneInfo(plan.portfolio.timezone))
     year, week, _ = local.isocalendar()
     return f"{year}-W{week:02d}"
 
 
-def _utc(moment: datetime | None) -> datetime:
-    """The moment in UTC, without microseconds; now when none is given."""
-    if moment is None:
-        return datetime.now(UTC).replace(microsecond=0)
-    if moment.tzinfo is None:
-        raise ValueError(f"a time without a zone is ambiguous: {moment}")
-    return moment.astimezone(UTC)
-
-
 def _micros(moment: datetime) -> int:
     return int(np.datetime64(moment.replace(tzinfo=None), "us").astype(np.int64))
-
-
-def _text(moment: object) -> str | None:
-    stamp = pd.Timestamp(moment)  # type: ignore[arg-type]
-    return None if pd.isna(stamp) else stamp.isoformat() + "Z"
-
-
-def nearest(name: str, names: list[str]) -> str:
-    """A hint for a name that is not known: the nearest ones."""
-    from difflib import get_close_matches
-
-    near = get_close_matches(name, names, n=3, cutoff=0.5)
-    return f" Did you mean {' or '.join(near)}?" if near else " See list.html of the report for the names."

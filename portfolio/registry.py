@@ -288,8 +288,8 @@ def _contradictions(rows: pd.DataFrame, targets: Mapping[str, float], place: _Pl
         ("expected", ("autocorrelation", "wear")),
         ("shape", (*SHAPES, *TYPES)),
     ):
-        report(rows[column].notna() & ~rows[column].isin(allowed), column,
-               lambda r, c=column: f"unknown {c} '{r[c]}'", f"Use {', '.join(allowed)} or leave it empty")  # fmt: skip
+        bad = rows[column].notna() & ~rows[column].isin(allowed)
+        report(bad, column, _unknown(column), f"Use {', '.join(allowed)} or leave it empty")
     report((rows["adjustable"] == "no") & rows["why_not_adjustable"].isna(), "why_not_adjustable",
            lambda r: f"'{r['characteristic']}' cannot be adjusted, but no reason is given",
            "Say why: the weekly review will ask", "warning")  # fmt: skip
@@ -297,9 +297,17 @@ def _contradictions(rows: pd.DataFrame, targets: Mapping[str, float], place: _Pl
     report(rows["subgroup_size"] % 1 > 0, "subgroup_size", lambda r: "a subgroup size is a whole number", "Correct it")
     report(rows["subgroup_minutes"] <= 0, "subgroup_minutes", lambda r: "a time must be above 0", "Correct it")
     for column in NOT_NEGATIVE:
-        report(rows[column] < 0, column, lambda r, c=column: f"{c} is negative ({r[c]:g})", "Correct the sign")
+        report(rows[column] < 0, column, _negative(column), "Correct the sign")
     problems += _unlike_units(rows, place)
     return sorted(problems, key=lambda problem: (problem.severity, problem.place))
+
+
+def _unknown(column: str) -> Callable[[pd.Series], str]:
+    return lambda row: f"unknown {column} '{row[column]}'"
+
+
+def _negative(column: str) -> Callable[[pd.Series], str]:
+    return lambda row: f"{column} is negative ({row[column]:g})"
 
 
 def _unlike_units(rows: pd.DataFrame, place: _Places) -> list[Problem]:

@@ -52,7 +52,7 @@ def compare(results: pd.DataFrame, *, confidence: float = 0.95) -> dict[str, Any
     return {"rows": rows, "families": _families(frame)}
 
 
-def _interval(count: np.ndarray, of: np.ndarray, confidence: float) -> tuple[np.ndarray, ...]:  # type: ignore[type-arg]
+def _interval(count: np.ndarray, of: np.ndarray, confidence: float) -> tuple[np.ndarray, ...]:
     """Share and its interval; NaN where nothing was counted."""
     low, high = wilson(count, of, confidence=confidence)
     with np.errstate(invalid="ignore", divide="ignore"):
@@ -91,6 +91,6 @@ def _families(frame: pd.DataFrame) -> list[dict[str, Any]]:
     return out
 
 
-def _first(column: pd.Series) -> str:  # type: ignore[type-arg]
+def _first(column: pd.Series) -> str:
     there = column.dropna()
     return str(there.iloc[0]) if len(there) else ""

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import hashlib
 from dataclasses import dataclass
+from importlib.metadata import version
 from pathlib import Path
 
 import vl_convert
@@ -11,7 +12,7 @@ import vl_convert
 from portfolio import shipped
 from portfolio.publishing import charts
 
-DRAWING = f"drawing-{vl_convert.__version__}"
+DRAWING = f"drawing-{version('vl-convert-python')}"
 LICENCES = """\
 drawing-*.js contains Vega, Vega-Lite, Vega-Embed and the Vega expression interpreter
 (BSD-3-Clause, (c) University of Washington Interactive Data Lab and contributors) and D3 modules
@@ -46,7 +47,11 @@ def _drawing(issues: list[Path]) -> bytes:
             if path.name == hashed(f"{DRAWING}.js", content):
                 return content
     # Wrapped: the bundle declares many short names at top level that would collide with ours.
-    return ("(()=>{" + vl_convert.javascript_bundle() + "\n})();\n").encode()
+    return ("(()=>{" + _bundle() + "\n})();\n").encode()
+
+
+def _bundle() -> str:
+    return str(vl_convert.javascript_bundle())  # type: ignore[call-arg]  # its stub asks for an optional argument
 
 
 def collect(issues: list[Path]) -> Assets:

@@ -55,7 +55,7 @@ def svg(kind: str, rows: Mapping[str, Sequence[Mapping[str, Any]]], label: str, 
     text = re.sub(r'\sstyle="[^"]*"', "", text)
     text = re.sub(r'(\sid="|url\(#|href="#)', lambda m: m.group(1) + prefix, text)
     text = re.sub(r"<svg ", f'<svg role="img" aria-label="{_attribute(label)}" class="drawn" ', text, count=1)
-    return Markup(text)  # noqa: S704 - drawn by Vega, which escapes its texts; the label is escaped above
+    return Markup(text)  # drawn by Vega, which escapes its texts; the label is escaped above
 
 
 def _templates_filled(kind: str, rows: Mapping[str, Sequence[Mapping[str, Any]]]) -> dict[str, Any]:
@@ -172,7 +172,10 @@ def _spread() -> alt.LayerChart:
 
 def _value_axis() -> alt.X:
     return alt.X(
-        "x:Q", title=None, scale=alt.Scale(zero=False, nice=False, padding=28), axis=alt.Axis(grid=False, tickCount=7, labelFlush=True)
+        "x:Q",
+        title=None,
+        scale=alt.Scale(zero=False, nice=False, padding=28),
+        axis=alt.Axis(grid=False, tickCount=7, labelFlush=True),
     )
 
 
@@ -184,7 +187,9 @@ def _limit_rules(width: float = 1.6) -> list[alt.Chart]:
         .encode(
             x=_value_axis(),
             color=alt.Color("k:N", scale=alt.Scale(domain=["limit", "aim"], range=[SPECIFICATION, AFTER]), legend=None),
-            strokeDash=alt.StrokeDash("k:N", scale=alt.Scale(domain=["limit", "aim"], range=[[1, 0], [5, 3]]), legend=None),
+            strokeDash=alt.StrokeDash(
+                "k:N", scale=alt.Scale(domain=["limit", "aim"], range=[[1, 0], [5, 3]]), legend=None
+            ),
         )
     )
     words = (
@@ -204,9 +209,7 @@ def _histogram() -> alt.LayerChart:
     bars = (
         alt.Chart(_named("bins"))
         .mark_rect(fill="var(--fill)", stroke=PROCESS, strokeWidth=0.8)
-        .encode(
-            x=_value_axis(), x2="b:Q", y=alt.Y("n:Q", title=None, axis=alt.Axis(tickCount=4)), y2=alt.datum(0)
-        )
+        .encode(x=_value_axis(), x2="b:Q", y=alt.Y("n:Q", title=None, axis=alt.Axis(tickCount=4)), y2=alt.datum(0))
     )
     curve = (
         alt.Chart(_named("curve"))
@@ -218,11 +221,11 @@ def _histogram() -> alt.LayerChart:
 
 def _curves(height: int, width: int, stroke: float) -> alt.LayerChart:
     axis = alt.Y("n:Q", title=None, axis=None, scale=alt.Scale(zero=True))
-    window = (
-        alt.Chart(_named("window")).mark_rect(fill="var(--window)", opacity=1).encode(x=_value_axis(), x2="b:Q")
-    )
+    window = alt.Chart(_named("window")).mark_rect(fill="var(--window)", opacity=1).encode(x=_value_axis(), x2="b:Q")
     now = (
-        alt.Chart(_named("now")).mark_line(stroke=MUTED, strokeDash=[5, 3], strokeWidth=stroke).encode(x=_value_axis(), y=axis)
+        alt.Chart(_named("now"))
+        .mark_line(stroke=MUTED, strokeDash=[5, 3], strokeWidth=stroke)
+        .encode(x=_value_axis(), y=axis)
     )
     after = alt.Chart(_named("after")).mark_line(stroke=AFTER, strokeWidth=stroke + 0.4).encode(x=_value_axis(), y=axis)
     return _dressed(alt.layer(window, now, after, *_limit_rules()), height=height, width=width)
@@ -239,7 +242,11 @@ def _card() -> alt.LayerChart:
 def _history() -> alt.LayerChart:
     rows, target = _named("history"), _named("target")
     band = alt.Chart(rows).mark_area(color="var(--fill)").encode(x=_time(), y=_measured("l"), y2="u:Q")
-    line = alt.Chart(rows).mark_line(stroke=PROCESS, point={"fill": PROCESS, "size": 18}).encode(x=_time(), y=_measured("v"))
+    line = (
+        alt.Chart(rows)
+        .mark_line(stroke=PROCESS, point={"fill": PROCESS, "size": 18})
+        .encode(x=_time(), y=_measured("v"))
+    )
     rule = alt.Chart(target).mark_rule(stroke=SPECIFICATION, strokeDash=[6, 3]).encode(y=alt.Y("v:Q"))
     return _dressed(alt.layer(band, line, rule), height=150)
 
@@ -248,8 +255,10 @@ def _intervals() -> alt.LayerChart:
     rows = _named("rows")
     x = alt.X("v:Q", title=None, scale=alt.Scale(domain=[0, 1]), axis=alt.Axis(format=".0%", tickCount=6))
     y = alt.Y("w:N", title=None, sort=None, axis=alt.Axis(labelLimit=220, ticks=False, domain=False))
-    bar = alt.Chart(rows).mark_rule(stroke=PROCESS, strokeWidth=6, opacity=0.35).encode(
-        x=alt.X("l:Q", title=None, scale=alt.Scale(domain=[0, 1])), x2="u:Q", y=y
+    bar = (
+        alt.Chart(rows)
+        .mark_rule(stroke=PROCESS, strokeWidth=6, opacity=0.35)
+        .encode(x=alt.X("l:Q", title=None, scale=alt.Scale(domain=[0, 1])), x2="u:Q", y=y)
     )
     dot = alt.Chart(rows).mark_point(filled=True, size=90, color=PROCESS, opacity=1).encode(x=x, y=y)
     return _dressed(alt.layer(bar, dot), height=120)
@@ -280,7 +289,9 @@ def _overview() -> alt.LayerChart:
         .encode(
             x=x,
             y=y,
-            shape=alt.Shape("k:N", scale=alt.Scale(domain=["listed", "other"], range=["diamond", "circle"]), legend=None),
+            shape=alt.Shape(
+                "k:N", scale=alt.Scale(domain=["listed", "other"], range=["diamond", "circle"]), legend=None
+            ),
             color=alt.Color("k:N", scale=alt.Scale(domain=["listed", "other"], range=[AFTER, MUTED]), legend=None),
             size=alt.Size("k:N", scale=alt.Scale(domain=["listed", "other"], range=[90, 26]), legend=None),
         )

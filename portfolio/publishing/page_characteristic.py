@@ -77,7 +77,9 @@ def neighbours(rows: list[dict[str, Any]]) -> dict[str, dict[str, Any]]:
     for i, row in enumerate(order):
         out[row["characteristic"]] = {
             "before": {"page": order[i - 1]["page"], "name": order[i - 1]["characteristic"]} if i else None,
-            "after": {"page": order[i + 1]["page"], "name": order[i + 1]["characteristic"]} if i + 1 < len(order) else None,
+            "after": {"page": order[i + 1]["page"], "name": order[i + 1]["characteristic"]}
+            if i + 1 < len(order)
+            else None,
         }
     return out
 
@@ -94,11 +96,23 @@ def _facts(row: dict[str, Any], n: Numbers) -> list[dict[str, str]]:
     if not missing(row["mean"]):
         out.append({"label": "Mean", "value": _value(row, "mean", n)})
     if not missing(row["sigma_total"]):
-        out.append({"label": "Total standard deviation", "value": n.quantity(row["sigma_total"], row["unit"], row["sigma_total"] / 10)})
+        out.append(
+            {
+                "label": "Total standard deviation",
+                "value": n.quantity(row["sigma_total"], row["unit"], row["sigma_total"] / 10),
+            }
+        )
     if not missing(row["index"]):
-        out.append({"label": f"{row['index_name']} (95 % bounds)", "value": f"{n.index(row['index'])} ({n.index(row['index_low'])} to {n.index(row['index_high'])})"})
+        out.append(
+            {
+                "label": f"{row['index_name']} (95 % bounds)",
+                "value": f"{n.index(row['index'])} ({n.index(row['index_low'])} to {n.index(row['index_high'])})",
+            }
+        )
         out.append({"label": "Target", "value": n.index(row["target_cpk"])})
-    out.append({"label": "Values judged", "value": f"{n.count(row['measurements'])} in {n.count(row['subgroups'])} subgroups"})
+    out.append(
+        {"label": "Values judged", "value": f"{n.count(row['measurements'])} in {n.count(row['subgroups'])} subgroups"}
+    )
     return out
 
 
@@ -107,18 +121,26 @@ def _figures(row: dict[str, Any], n: Numbers) -> list[dict[str, str]]:
     table = [
         ("Cp", "cp", "tolerance over six total standard deviations of the judged stretch"),
         ("Cpk", "cpk", "distance of the mean from the nearer limit over three total standard deviations"),
-        ("Cp, within subgroups", "cp_within", "as Cp, with the spread inside the subgroups only: what would be there if all periods were alike"),
+        (
+            "Cp, within subgroups",
+            "cp_within",
+            "as Cp, with the spread inside the subgroups only: what would be there if all periods were alike",
+        ),
         ("Cpk, within subgroups", "cpk_within", "as Cpk, with the spread inside the subgroups only"),
         ("Pp", "pp", "tolerance over six plain standard deviations of the whole window"),
         ("Ppk", "ppk", "as Cpk, with the plain standard deviation of the whole window: what was delivered"),
     ]
     return [
-        {"name": name, "value": n.index(row[key]), "means": means} for name, key, means in table if not missing(row[key])
+        {"name": name, "value": n.index(row[key]), "means": means}
+        for name, key, means in table
+        if not missing(row[key])
     ]
 
 
 def _control_caption(row: dict[str, Any], evidence: dict[str, Any], location: str, n: Numbers) -> str:
-    beyond = len({int(i) for i, rule in zip(evidence["signal_index"], evidence["signal_rule"], strict=True) if rule != "spread"})
+    beyond = len(
+        {int(i) for i, rule in zip(evidence["signal_index"], evidence["signal_rule"], strict=True) if rule != "spread"}
+    )
     change = "" if missing(row["since"]) else f" The dotted line marks {n.date(row['since'])}."
     return f"{location} over time with control limits from the process itself. {n.count(beyond)} carry a signal (diamonds).{change}"
 
@@ -127,7 +149,9 @@ def _histogram_caption(row: dict[str, Any], n: Numbers) -> str:
     outside = row["outside_observed"]
     if missing(row["lsl"]) and missing(row["usl"]):
         return f"All {n.count(row['measurements'])} values of the judged stretch; no specification limit is registered."
-    told = "None of them lies" if not outside else f"{n.count(outside)} of them lie" if outside > 1 else "One of them lies"
+    told = (
+        "None of them lies" if not outside else f"{n.count(outside)} of them lie" if outside > 1 else "One of them lies"
+    )
     return f"All {n.count(row['measurements'])} values of the judged stretch against the specification limits. {told} outside."
 
 
@@ -145,8 +169,18 @@ def _about_data(row: dict[str, Any], n: Numbers) -> list[dict[str, str]]:
     if not missing(row["df_effective"]):
         out.append(("Effective degrees of freedom of the spread", n.fixed(row["df_effective"], 0)))
     if not missing(row["stability_q"]):
-        out.append(("Stability: p-value, and q-value over the whole portfolio", f"{_small(row['stability_p'], n)}, {_small(row['stability_q'], n)}"))
-    for key, label in (("owner", "Owner"), ("class", "Class"), ("adjustable", "Adjustable"), ("why_not_adjustable", "Why not")):
+        out.append(
+            (
+                "Stability: p-value, and q-value over the whole portfolio",
+                f"{_small(row['stability_p'], n)}, {_small(row['stability_q'], n)}",
+            )
+        )
+    for key, label in (
+        ("owner", "Owner"),
+        ("class", "Class"),
+        ("adjustable", "Adjustable"),
+        ("why_not_adjustable", "Why not"),
+    ):
         if not missing(row[key]):
             out.append((label, str(row[key])))
     return [{"label": label, "value": value} for label, value in out]

@@ -112,7 +112,9 @@ def alarms(data: PageData, rows: list[dict[str, Any]], n: Numbers) -> list[str]:
         out.append(f"{n.count(silent)} characteristics have sent nothing for weeks.")
     suspect = sum(row["capability_note"] == "suspect_limits" for row in rows)
     if suspect:
-        out.append(f"{n.count(suspect)} characteristics lie wholly outside their limits: a wrong limit or unit is likely.")
+        out.append(
+            f"{n.count(suspect)} characteristics lie wholly outside their limits: a wrong limit or unit is likely."
+        )
     critical = sum(
         row["class"] in wording.SAFETY_CLASSES and row["capability"] == "not capable" and row["cell"] != "not judged"
         for row in rows
@@ -127,9 +129,7 @@ def alarms(data: PageData, rows: list[dict[str, Any]], n: Numbers) -> list[str]:
 
 def not_judged(rows: list[dict[str, Any]], n: Numbers) -> list[dict[str, str]]:
     """Why characteristics were not judged, most frequent first."""
-    why = Counter(
-        row["capability_note"] or row["stability_note"] for row in rows if row["cell"] == "not judged"
-    )
+    why = Counter(row["capability_note"] or row["stability_note"] for row in rows if row["cell"] == "not judged")
     return [{"number": n.count(count), "why": wording.NOT_JUDGED.get(code, code)} for code, count in why.most_common()]
 
 
@@ -154,7 +154,11 @@ def _news(data: PageData, rows: list[dict[str, Any]]) -> dict[str, Any]:
     def some(status: str) -> list[dict[str, Any]]:
         part = data.ranking[data.ranking["status"] == status]
         return [
-            {"name": row["characteristic"], "page": pages.get(row["characteristic"]), "why": wording.left_list(row["reason"] or "")}
+            {
+                "name": row["characteristic"],
+                "page": pages.get(row["characteristic"]),
+                "why": wording.left_list(row["reason"] or ""),
+            }
             for row in part.to_dict("records")
         ]
 

@@ -7,7 +7,14 @@ from typing import Any
 from portfolio.publishing import wording
 from portfolio.publishing.numbers import Numbers, missing
 
-FILTERS = (("site", "Site"), ("cell", "Verdict"), ("route", "Next step"), ("centering", "Centering"), ("class", "Class"), ("owner", "Owner"))
+FILTERS = (
+    ("site", "Site"),
+    ("cell", "Verdict"),
+    ("route", "Next step"),
+    ("centering", "Centering"),
+    ("class", "Class"),
+    ("owner", "Owner"),
+)
 
 
 def columns(rows: list[dict[str, Any]], n: Numbers) -> dict[str, list[Any]]:

@@ -30,7 +30,11 @@ def _sheet(row: dict[str, Any], evidence: dict[str, Any] | None, n: Numbers, i: 
     out["capability"] = wording.capability_sentence(row, n)
     out["control"] = out["histogram"] = None
     if evidence is not None:
-        out["control"] = charts.svg("control", records.control(row, evidence, n.zone)[0], "Location over time with control limits", f"c{i}-")
-        out["histogram"] = charts.svg("histogram", records.histogram(row, evidence), "Values against the specification limits", f"h{i}-")
+        out["control"] = charts.svg(
+            "control", records.control(row, evidence, n.zone)[0], "Location over time with control limits", f"c{i}-"
+        )
+        out["histogram"] = charts.svg(
+            "histogram", records.histogram(row, evidence), "Values against the specification limits", f"h{i}-"
+        )
     out["centering"] = charts.svg("centering", records.centering(row), out["caption"], f"z{i}-")
     return out

@@ -38,7 +38,12 @@ def sites(compared: dict[str, Any], n: Numbers) -> dict[str, Any]:
     if len(several) > 1:
         picture = charts.svg(
             "intervals",
-            {"rows": [{"w": r["site"], "v": r["shares"][GOOD][0], "l": r["shares"][GOOD][1], "u": r["shares"][GOOD][2]} for r in several]},
+            {
+                "rows": [
+                    {"w": r["site"], "v": r["shares"][GOOD][0], "l": r["shares"][GOOD][1], "u": r["shares"][GOOD][2]}
+                    for r in several
+                ]
+            },
             "Share of judged characteristics that are predictable and fit the tolerance, by site, with 95 % intervals",
             "s-",
         )
@@ -50,11 +55,17 @@ def sites(compared: dict[str, Any], n: Numbers) -> dict[str, Any]:
                     "site": member["site"],
                     "name": member["characteristic"],
                     "index": "" if missing(member["index"]) else f"{member['index_name']} {n.index(member['index'])}",
-                    "bounds": "" if missing(member["index_low"]) else f"{n.index(member['index_low'])} to {n.index(member['index_high'])}",
+                    "bounds": ""
+                    if missing(member["index_low"])
+                    else f"{n.index(member['index_low'])} to {n.index(member['index_high'])}",
                     "n": n.count(member["n"]),
                     "verdict": wording.CELL[member["cell"]],
                     "mean": n.quantity(member["mean"], family["unit"], member["sigma_total"]),
-                    "sigma": n.quantity(member["sigma_total"], family["unit"], None if missing(member["sigma_total"]) else member["sigma_total"] / 10),
+                    "sigma": n.quantity(
+                        member["sigma_total"],
+                        family["unit"],
+                        None if missing(member["sigma_total"]) else member["sigma_total"] / 10,
+                    ),
                 }
                 for member in family["rows"]
             ],
@@ -91,13 +102,25 @@ def quality(data: PageData, rows: list[dict[str, Any]], n: Numbers) -> dict[str,
     return {
         "alarms": alarms(data, rows, n),
         "sources": sources,
-        "never": [{"source": pull["source"], "status": pull["status"], "message": pull["message"] or ""} for pull in never],
+        "never": [
+            {"source": pull["source"], "status": pull["status"], "message": pull["message"] or ""} for pull in never
+        ],
         "reasons": [
-            {"source": r["source"], "reason": r["reason"], "rows": n.count(r["rows"]), "files": n.count(r["items"]), "example": r["example"]}
+            {
+                "source": r["source"],
+                "reason": r["reason"],
+                "rows": n.count(r["rows"]),
+                "files": n.count(r["items"]),
+                "example": r["example"],
+            }
             for r in data.rejected.to_dict("records")
         ],
-        "refused": [{"source": r["source"], "item": r["item"], "reason": r["reason"]} for r in data.refused.to_dict("records")],
-        "unregistered": [{"name": r["name"], "number": n.count(r["measurements"])} for r in data.unregistered.to_dict("records")],
+        "refused": [
+            {"source": r["source"], "item": r["item"], "reason": r["reason"]} for r in data.refused.to_dict("records")
+        ],
+        "unregistered": [
+            {"name": r["name"], "number": n.count(r["measurements"])} for r in data.unregistered.to_dict("records")
+        ],
         "why": not_judged(rows, n),
         "unjudged": [
             {

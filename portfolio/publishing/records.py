@@ -30,15 +30,19 @@ def control(row: Row, evidence: Row, zone: str) -> tuple[Rows, Rows]:
     around = [_each(_column(evidence[f"spread_{side}"]), m) for side in ("lower", "upper", "centre")]
     return (
         {
-            "points": [{"t": a, "v": v, "s": int(i in signalled)} for i, (a, v) in enumerate(zip(t, location, strict=True))],
-            "limits": _constant_parts(t, *limits, centre),
+            "points": [
+                {"t": a, "v": v, "s": int(i in signalled)} for i, (a, v) in enumerate(zip(t, location, strict=True))
+            ],
+            "limits": _constant_parts(t, limits[0], limits[1], centre),
             "change": change,
         },
         {
             "spreads": [
-                {"t": a, "v": v, "s": int(i in beyond)} for i, (a, v) in enumerate(zip(t, spread, strict=True)) if v is not None
+                {"t": a, "v": v, "s": int(i in beyond)}
+                for i, (a, v) in enumerate(zip(t, spread, strict=True))
+                if v is not None
             ],
-            "spreadlimits": _constant_parts(t, *around),
+            "spreadlimits": _constant_parts(t, around[0], around[1], around[2]),
         },
     )
 

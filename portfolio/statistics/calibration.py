@@ -100,8 +100,7 @@ def make(statistics: dict[str, Callable[[Floats], Floats]], seed: int = 20261201
             x = x[np.isfinite(x)]
             out[f"{name}_body"].append(np.quantile(x, 1 - BODY) if len(x) else np.zeros(len(BODY)))
             out[f"{name}_tail"].append(_fit_tail(x))
-    packed = {name: np.array(rows).astype(np.float32) for name, rows in out.items()}
-    return {"lengths": lengths.astype(np.int32), **packed}
+    return {"lengths": lengths.astype(np.float64)} | {name: np.array(rows) for name, rows in out.items()}
 
 
 def _fit_tail(x: Floats) -> Floats:
@@ -120,17 +119,16 @@ def _fit_tail(x: Floats) -> Floats:
 def _main() -> None:
     from portfolio.statistics import exchangeability as ex
 
-    np.savez_compressed(
-        FILE,
-        **make(
-            {
-                "step": lambda y: ex.step_statistic(y)[0],
-                "serial": lambda y: np.abs(ex.lag_one(y)),
-                "cycle": lambda y: ex.cycle_statistic(y)[0],
-                "moving": lambda y: ex.step_statistic(ex.normal_scores(np.abs(np.diff(y, axis=1))))[0],
-            }
-        ),
+    made = make(
+        {
+            "step": lambda y: ex.step_statistic(y)[0],
+            "serial": lambda y: np.abs(ex.lag_one(y)),
+            "cycle": lambda y: ex.cycle_statistic(y)[0],
+            "moving": lambda y: ex.step_statistic(ex.normal_scores(np.abs(np.diff(y, axis=1))))[0],
+        }
     )
+    packed = {name: values.astype(np.float32) for name, values in made.items()}
+    np.savez_compressed(FILE, allow_pickle=False, **packed)
 
 
 if __name__ == "__main__":

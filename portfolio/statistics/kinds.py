@@ -27,10 +27,10 @@ class Kinds:
     `main`: first position after the largest change, `other`: after the second one (two steps only), -1 if none.
     """
 
-    kind: np.ndarray  # type: ignore[type-arg]
+    kind: np.ndarray
     main: Ints
     other: Ints
-    group: np.ndarray  # type: ignore[type-arg]
+    group: np.ndarray
     rhythm: Floats  # share of the variance of the scores that a cycle or an alternation explains, else NaN
 
 
@@ -58,7 +58,7 @@ def name(parts: Parts, p_isolated: Floats, of: Ints, asked: Bools) -> Kinds:
     return Kinds(kind, main, other, group, rhythm)
 
 
-def _location_kind(y: Floats) -> tuple[np.ndarray, Ints, Ints, Floats]:  # type: ignore[type-arg]
+def _location_kind(y: Floats) -> tuple[np.ndarray, Ints, Ints, Floats]:
     m = y.shape[1]
     y = y - y.mean(axis=1, keepdims=True)
     total = (y * y).sum(axis=1)
