@@ -56,6 +56,15 @@ def test_a_three_way_chart_judges_the_means_as_individuals_and_the_range_within(
     assert np.isnan(within.between_upper[0])
 
 
+def test_where_the_means_are_judged_as_individuals_each_counts_once_whatever_its_size() -> None:
+    rng = np.random.default_rng(9)
+    sizes = [2, 3, 9] * 8 + [1, 1, 6] * 8
+    series, made, _ = drawn(rng.normal(size=sum(sizes)), sizes, [0, 24, 48], [True, False])
+    assert made.kind.tolist() == ["three-way", "individuals"]
+    assert made.centre == pytest.approx([series.mean[:24].mean(), series.mean[24:].mean()])
+    assert np.ptp(made.upper[:24]) == np.ptp(made.upper[24:]) == 0
+
+
 def test_each_subgroup_has_limits_of_its_own_size() -> None:
     rng = np.random.default_rng(3)
     sizes = np.array([2, 4, 16] * 8)

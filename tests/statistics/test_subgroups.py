@@ -85,6 +85,10 @@ def test_each_characteristic_follows_its_own_rule_and_none_is_joined_with_its_ne
     assert found == [[[0, 1]], [], [[2, 3]], [[4, 5], [6, 7]], [[8, 9]]]
 
 
+def test_a_time_shared_only_with_the_neighbour_characteristic_does_not_count_as_shared() -> None:
+    assert cut([1, 1, 2, 3, 3], start=[0, 4, 5]) == [[[0], [1], [2], [3]], [[4]]]
+
+
 def test_nothing_at_all_gives_no_subgroup() -> None:
     assert cut([], start=[0, 0, 0]) == [[], []]
     assert cut([], start=[0]) == []
