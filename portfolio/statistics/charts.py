@@ -230,12 +230,12 @@ EXPECTED_THREE_WAY = (
 )
 
 
-def expected_signals(m: Ints, individuals: Bools, three_way: Bools, size: Floats | None = None) -> Floats:
+def expected_signals(m: Ints, individuals: Bools, three_way: Bools, size: Floats) -> Floats:
     """Subgroups with a signal that a stable normal process of `m` subgroups would show on average, (K,).
 
-    `size` (K,): usual subgroup size; without it 5. Small subgroups signal more: the range of two is skewed.
+    `size` (K,): usual subgroup size (NaN where there is none). Small subgroups signal more: the range of two is skewed.
     """
-    typical = np.full(len(m), 5.0) if size is None else np.nan_to_num(size, nan=5.0)
+    typical = np.nan_to_num(size, nan=float(EXPECTED_SIZE[0]))
     a, b = (
         np.where(three_way, np.interp(typical, EXPECTED_SIZE, layered), np.interp(typical, EXPECTED_SIZE, plain))
         for layered, plain in zip(EXPECTED_THREE_WAY, EXPECTED_SUBGROUPS, strict=True)

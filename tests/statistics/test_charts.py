@@ -293,11 +293,9 @@ def test_a_stable_process_shows_as_many_signals_as_announced(m: int, n: int, lay
     assert abs(found.count.mean() - announced) < 4 * noise + 0.06 * announced  # the fitted line is good to 6 %
 
 
-def test_without_a_size_five_is_taken_and_no_length_gives_a_negative_number() -> None:
-    m, no = np.array([0, 5, 80]), np.array([False] * 3)
-    assert charts.expected_signals(m, no, no).tolist() == charts.expected_signals(m, no, no, np.full(3, 5.0)).tolist()
-    assert charts.expected_signals(m, no, no, np.array([np.nan, 5.0, 5.0]))[0] == 0
-    assert (charts.expected_signals(m, no, no) >= 0).all()
+def test_a_characteristic_without_subgroups_expects_no_signal_and_no_length_a_negative_number() -> None:
+    size, no = np.array([np.nan, 5.0, 5.0]), np.array([False] * 3)
+    assert charts.expected_signals(np.array([0, 5, 80]), no, no, size).tolist() == pytest.approx([0, 0, 1.403])
 
 
 @pytest.mark.slow
