@@ -104,7 +104,8 @@ def _conclude_capability(out: pd.DataFrame, registry: pd.DataFrame, settings: Ju
     for column in ("index", "index_low", "index_high", "chance_now", "ppm_now"):
         out[column] = np.where(judged, out[column], np.nan)
     out["index_name"] = np.where(judged, out["index_name"], "")
-    out["shape"] = np.where(judged, "normal", "")
+    cautious = stable & out["normal_cautious"].to_numpy()
+    out["shape"] = np.where(judged, np.where(cautious, "normal, cautious", "normal"), "")
 
 
 def _why_not(out: pd.DataFrame, registry: pd.DataFrame, settings: Judgement) -> np.ndarray:
@@ -130,6 +131,7 @@ def _why_not(out: pd.DataFrame, registry: pd.DataFrame, settings: Judgement) -> 
         (n < settings.minimum_values, "too_few"),
         (stable & ~(df >= settings.minimum_df), "too_few"),
         (unjudged, stability_note),
+        (stable & (out["normal_refused"] & ~out["normal_cautious"]).to_numpy(), "no_shape"),
     ]
     note = np.full(len(out), "", dtype=object)
     for applies, code in reasons:

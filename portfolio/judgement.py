@@ -15,7 +15,17 @@ import pyarrow as pa
 
 from portfolio import evidence
 from portfolio.plan import Judgement
-from portfolio.statistics import capability, centering, charts, components, gauge, proportions, ragged, stability
+from portfolio.statistics import (
+    capability,
+    centering,
+    charts,
+    components,
+    gauge,
+    normality,
+    proportions,
+    ragged,
+    stability,
+)
 from portfolio.statistics import subgroups as grouping
 from portfolio.statistics.ragged import Bools, Floats, Ints
 
@@ -123,7 +133,7 @@ def measure(
     rows["layers_drawn"] = layers
     rows["signals"] = flagged.count
     rows["expected_signals"] = charts.expected_signals(
-        ragged.lengths(groups.of), series.individuals, drawn.kind == "three-way"
+        ragged.lengths(groups.of), series.individuals, drawn.kind == "three-way", series.median_size
     )
 
     rows["measurements"] = ragged.lengths(stretch.start)
@@ -145,6 +155,8 @@ def measure(
     ordered = gauge.sorted_within(stretch.value, stretch.start)
     recorded = gauge.recording(ordered, stretch.start, registry["resolution"].to_numpy(dtype=np.float64))
     rows["distinct_values"], rows["recording_step"] = recorded.distinct, recorded.step
+    shape = normality.normality(ordered, stretch.start, recorded.step)
+    rows["normal_a2"], rows["normal_refused"], rows["normal_cautious"] = shape.a2, shape.refused, shape.cautious
     outside = ragged.sums(
         (stretch.value < np.repeat(lower, np.diff(stretch.start)))
         | (stretch.value > np.repeat(upper, np.diff(stretch.start))),
@@ -203,7 +215,16 @@ def _add_capability(
     declared = registry["aim"].to_numpy(dtype=np.float64)
     aim = np.where(np.isfinite(declared) & both, declared, middle)
     moved = centering.centre(
-        mean, total, n_mean, df, lower, upper, aim, target, setting_sd=settings.setting_sd_share * total
+        mean,
+        total,
+        n_mean,
+        df,
+        lower,
+        upper,
+        aim,
+        target,
+        setting_sd=settings.setting_sd_share * total,
+        confidence=settings.confidence,
     )
     rows["aim"], rows["move"], rows["move_least"] = moved.aim, moved.move, moved.move_least
     rows["aim_low"], rows["aim_high"] = moved.window_low, moved.window_high

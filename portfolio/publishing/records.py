@@ -55,7 +55,7 @@ def histogram(row: Row, evidence: Row) -> Rows:
         {"x": _digits(first + i * width), "b": _digits(first + (i + 1) * width), "n": c} for i, c in enumerate(counts)
     ]
     curve = []
-    if row["shape"] == "normal" and not missing(row["sigma_total"]) and row["sigma_total"] > 0:
+    if row["shape"] and not missing(row["sigma_total"]) and row["sigma_total"] > 0:
         curve = normal_curve(row["mean"], row["sigma_total"], -math.inf, math.inf, sum(counts) * width)
     return {"bins": bins, "curve": curve, "marks": marks(row)}
 

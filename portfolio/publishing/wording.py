@@ -44,7 +44,7 @@ NOT_JUDGED = {
     "crossed_limits": "the registered limits are crossed",
     "outside_bound": "a value lies beyond a natural bound, which is impossible: check the data",
     "gauge_too_noisy": "the gauge's own variation makes up nearly all that is seen",
-    "no_shape": "no known shape fits the values, so no index would be honest",
+    "no_shape": "the values do not have the normal shape, so an index read off it would not be honest",
     "suspect_limits": "every value lies far outside: suspect the limits or the unit first",
     "sorted": "the values stop abruptly at a limit: they look sorted",
 }
@@ -342,7 +342,12 @@ def _definition(row: Row, n: Numbers) -> list[str]:
     )
     return [
         f"Specification limits: {limits}. Mean {n.quantity(row['mean'], row['unit'], row['sigma_total'])}, total standard "
-        f"deviation {n.quantity(row['sigma_total'], row['unit'], row['sigma_total'] / 10)}; shape assumed: {row['shape']}."
+        f"deviation {n.quantity(row['sigma_total'], row['unit'], row['sigma_total'] / 10)}; shape assumed: normal."
+        + (
+            " Its tails are lighter than normal (several streams mixed?), so the figure is cautious."
+            if "cautious" in row["shape"]
+            else ""
+        )
     ]
 
 
