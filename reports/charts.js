@@ -3,53 +3,99 @@
 (() => {
   "use strict";
   const source = document.getElementById("data");
-  const rows = source ? JSON.parse(source.textContent) : {};
+  const given = source ? JSON.parse(source.textContent) : {};
+  const decimal = given.decimal || ".";
   const figures = [...document.querySelectorAll("figure[data-chart]")];
   const embed = window.vegaEmbed;
   const templates = window.portfolioTemplates;
+  const list = window.portfolioList;
+
+  /* The short forms of data sets, written out as publishing/charts.py does. */
+  const CURVE_POINTS = 61;
+  const CURVE_REACH = 4.2;
+  const curve = (mean, sigma, area) => Array.from({ length: CURVE_POINTS }, (_, i) => {
+    const z = -CURVE_REACH + (2 * CURVE_REACH * i) / (CURVE_POINTS - 1);
+    return { x: mean + sigma * z, n: (area * Math.exp(-0.5 * z * z)) / (sigma * Math.sqrt(2 * Math.PI)) };
+  });
+  const table = (columns) => {
+    const marked = new Set(columns.s || []);
+    let moment = 0;
+    return columns.t.map((step, i) => {
+      moment = i ? moment + 1000 * step : step;
+      const row = {};
+      for (const name of Object.keys(columns)) row[name] = columns[name][i];
+      row.t = moment;
+      if (columns.s) row.s = marked.has(i) ? 1 : 0;
+      return row;
+    });
+  };
+  const expanded = (data) => {
+    if (Array.isArray(data)) return data;
+    if (data.bins) {
+      const [start, width, counts] = data.bins;
+      return counts.map((n, i) => ({ x: start + i * width, b: start + (i + 1) * width, n }));
+    }
+    return data.normal ? curve(...data.normal) : table(data.columns);
+  };
+  const rows = {};
+  for (const figure of figures) {
+    const kind = figure.dataset.chart;
+    rows[kind] = Object.fromEntries(Object.entries(given[kind] || {}).map(([name, data]) => [name, expanded(data)]));
+  }
+  if (rows.overview && list) {
+    rows.overview.points = list.name.flatMap((_, i) => list.index[i] === null || list.after[i] === null ? []
+      : [{ x: list.index[i], y: list.after[i], k: list.rank[i] === null ? "other" : "listed", i }]);
+  }
 
   const filled = (kind, place) => {
     const spec = structuredClone(templates[kind]);
-    const own = rows[kind] || {};
-    for (const entry of spec.data) if (own[entry.name]) entry.values = own[entry.name];
+    for (const entry of spec.data) if (rows[kind][entry.name]) entry.values = rows[kind][entry.name];
     spec.width = Math.max(220, Math.floor(place.clientWidth));
     if (kind === "overview") spec.height = Math.min(340, Math.max(240, Math.floor(place.clientWidth * 0.5)));
     return spec;
   };
+  const options = {
+    mode: "vega", ast: true, actions: false, defaultStyle: false, renderer: "svg", tooltip: false,
+    formatLocale: { decimal, thousands: "\u202f", grouping: [3], currency: ["", ""] },
+  };
 
+  const views = new Map();
   const draw = async (figure) => {
     const kind = figure.dataset.chart;
     const place = figure.querySelector(".plot");
-    if (!rows[kind]) return;
     const caption = figure.querySelector("figcaption");
-    const options = { mode: "vega", ast: true, actions: false, defaultStyle: false, renderer: "svg", tooltip: false };
+    if (views.has(figure)) views.get(figure).finalize();
     const result = await embed(place, filled(kind, place), options);
+    views.set(figure, result);
     const svg = place.querySelector("svg");
-    if (svg) {
-      svg.setAttribute("role", "img");
-      svg.setAttribute("aria-label", caption ? caption.textContent.trim().replace(/\s+/g, " ") : kind);
-    }
+    svg.setAttribute("role", "img");
+    svg.setAttribute("aria-label", caption.textContent.trim().replace(/\s+/g, " "));
     if (kind === "overview") follow(result.view, figure);
     figure.dataset.drawn = "yes";
   };
 
   /* A point of the overview names its characteristic and opens its page. */
   const follow = (view, figure) => {
-    const list = rows.names || [];
     const told = figure.querySelector(".told");
+    const under = (item) => (item && item.datum && Number.isInteger(item.datum.i) ? item.datum.i : -1);
     view.addEventListener("mousemove", (_, item) => {
-      const named = item && item.datum && list[item.datum.i];
-      told.textContent = named ? named.n : "";
+      const name = document.createElement("bdi");
+      name.textContent = under(item) < 0 ? "" : list.name[under(item)];
+      told.replaceChildren(name);
     });
     view.addEventListener("click", (_, item) => {
-      const named = item && item.datum && list[item.datum.i];
-      if (named) window.location.href = "c/" + named.p;
+      if (under(item) >= 0) window.location.href = "c/" + list.page[under(item)];
     });
   };
 
   /* The numbers of a picture as a table, made when somebody opens it. */
   const when = (t) => new Date(t).toISOString().slice(0, 16).replace("T", " ");
   const limitAt = (limits, t) => limits.filter((limit) => limit.t <= t).pop() || limits[0] || {};
+  const written = (value) => {
+    if (value === null || value === undefined) return "";
+    if (typeof value !== "number") return value;
+    return String(Number(value.toPrecision(12))).replace(".", decimal).replace(/-/g, "\u2212");
+  };
   const tables = {
     control: (own) => [["Time", "Value", "Lower control limit", "Upper control limit", "Signal"], own.points.map((p) => {
       const limit = limitAt(own.limits, p.t);
@@ -63,32 +109,46 @@
       const own = rows[details.dataset.table];
       if (!details.open || !own || details.querySelector("table")) return;
       const [heads, lines] = tables[details.dataset.table](own);
-      const table = document.createElement("table");
+      const shown = document.createElement("table");
       const row = (cells, tag) => {
         const tr = document.createElement("tr");
         for (const text of cells) {
           const cell = document.createElement(tag);
           if (tag === "th") cell.scope = "col";
           cell.className = "number";
-          cell.textContent = text === null || text === undefined ? "" : String(text);
+          cell.textContent = written(text);
           tr.append(cell);
         }
         return tr;
       };
-      table.createTHead().append(row(heads, "th"));
-      table.createTBody().append(...lines.map((cells) => row(cells, "td")));
+      shown.createTHead().append(row(heads, "th"));
+      shown.createTBody().append(...lines.map((cells) => row(cells, "td")));
       const scroll = document.createElement("div");
       scroll.className = "scroll";
-      scroll.append(table);
+      scroll.tabIndex = 0;
+      scroll.append(shown);
       details.append(scroll);
     });
   }
 
-  const all = () => Promise.all(figures.map(draw)).then(() => { document.body.dataset.ready = "yes"; });
-  if (!embed || !templates) {
+  const failed = (figure) => {
+    figure.querySelector(".plot").textContent = "This picture could not be drawn: a script file of the folder is missing or damaged. Everything in words and numbers is complete.";
+  };
+  const all = async () => {
+    let ready = "yes";
     for (const figure of figures) {
-      figure.querySelector(".plot").textContent = "The picture could not be drawn: a script file is missing. The numbers below it are complete.";
+      try {
+        await draw(figure);
+      } catch (error) {
+        console.error(error);
+        failed(figure);
+        ready = "failed";
+      }
     }
+    document.body.dataset.ready = ready;
+  };
+  if (!embed || !templates || (rows.overview && !list)) {
+    figures.forEach(failed);
     document.body.dataset.ready = "failed";
     return;
   }

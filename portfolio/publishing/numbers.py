@@ -43,17 +43,30 @@ class Numbers:
         return self.fixed(value, 2)
 
     def value(self, value: Any, scale: Any = None, *, sign: bool = False) -> str:
-        """A measured quantity, to about a tenth of `scale` (its sigma); three significant digits without one."""
+        """A measured quantity, to about a tenth of `scale` (its sigma); three significant digits without one.
+
+        A power of ten is used where both the value and its scale are tiny, and for large values that are not known to
+        more digits than a power shows: 1 000 000 003 Hz with a sigma of 0.8 Hz is written out.
+        """
         if missing(value) or not math.isfinite(value):
             return "–"
         size = abs(value)
-        if size and (size >= 1e7 or size < 1e-5):
-            exponent = math.floor(math.log10(size))
-            return f"{self.fixed(value / 10**exponent, 2)}{THIN}·{THIN}10{str(exponent).translate(SUPERSCRIPT)}"
         ground = scale if not missing(scale) and scale > 0 else (size / 100 or 1.0)
-        digits = min(8, max(0, math.ceil(-math.log10(ground)) + 1))
-        text = self.fixed(value, digits)
+        digits = math.ceil(-math.log10(ground)) + 1
+        tiny = max(size, ground) < 1e-5
+        if size and (tiny or (size >= 1e7 and size / ground < 1e4)):
+            text = self._power(value, digits)
+        else:
+            text = self.fixed(value, 0 if tiny else min(8, max(0, digits)))
         return f"+{text}" if sign and value > 0 else text
+
+    def _power(self, value: float, digits: int) -> str:
+        """Mantissa and power of ten; `digits` are the decimals (may be negative) of the plain number."""
+        exponent = math.floor(math.log10(abs(value)))
+        decimals = min(8, max(2, digits + exponent))
+        if abs(round(value / 10.0**exponent, decimals)) >= 10:
+            exponent += 1
+        return f"{self.fixed(value / 10.0**exponent, decimals)}{THIN}·{THIN}10{str(exponent).translate(SUPERSCRIPT)}"
 
     def quantity(self, value: Any, unit: Any, scale: Any = None, *, sign: bool = False) -> str:
         """A measured quantity with its unit."""

@@ -1,4 +1,4 @@
-"""The page of one characteristic, told as questions. Control limits stand in one picture, specification limits in others."""
+"""The page of one characteristic, told as questions. No picture holds control limits and specification limits."""
 
 from __future__ import annotations
 
@@ -36,15 +36,17 @@ def context(
     if not missing(row["cpk_centered"]):
         drawings["centering"] = records.centering(row)
         pictures["centering"] = (
-            f"Dashed: now, mean {_value(row, 'mean', n)}. Solid: the same spread with the mean at {_value(row, 'aim', n)}: "
-            f"Cpk {n.index(row['index'])} becomes {n.index(row['cpk_centered'])}."
+            f"Dashed: now, mean {_value(row, 'mean', n)}. Solid: the same spread with the mean at "
+            f"{_value(row, 'aim', n)}: Cpk {n.index(row['index'])} becomes {n.index(row['cpk_centered'])}."
         )
     if history is not None and history["index"].notna().sum() > 1:
         drawings["history"] = records.history(history, row["target_cpk"], n.zone)
         pictures["history"] = (
-            f"The judged index of {n.count(int(history['index'].notna().sum()))} judgements with its 95 % bounds; target "
-            f"{n.index(row['target_cpk'])} dashed."
+            f"The judged index of {n.count(int(history['index'].notna().sum()))} judgements with its 95 % bounds; "
+            f"target {n.index(row['target_cpk'])} dashed."
         )
+    if drawings:
+        drawings["decimal"] = n.decimal
     return {
         "name": row["characteristic"],
         "where": place(row),
@@ -142,7 +144,10 @@ def _control_caption(row: dict[str, Any], evidence: dict[str, Any], location: st
         {int(i) for i, rule in zip(evidence["signal_index"], evidence["signal_rule"], strict=True) if rule != "spread"}
     )
     change = "" if missing(row["since"]) else f" The dotted line marks {n.date(row['since'])}."
-    return f"{location} over time with control limits from the process itself. {n.count(beyond)} carry a signal (diamonds).{change}"
+    return (
+        f"{location} over time with control limits from the process itself. {n.count(beyond)} carry a signal "
+        f"(diamonds).{change}"
+    )
 
 
 def _histogram_caption(row: dict[str, Any], n: Numbers) -> str:
@@ -152,7 +157,8 @@ def _histogram_caption(row: dict[str, Any], n: Numbers) -> str:
     told = (
         "None of them lies" if not outside else f"{n.count(outside)} of them lie" if outside > 1 else "One of them lies"
     )
-    return f"All {n.count(row['measurements'])} values of the judged stretch against the specification limits. {told} outside."
+    values = n.count(row["measurements"])
+    return f"All {values} values of the judged stretch against the specification limits. {told} outside."
 
 
 def _about_data(row: dict[str, Any], n: Numbers) -> list[dict[str, str]]:

@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections import Counter
 from typing import TYPE_CHECKING, Any
 
-from portfolio.publishing import charts, names, records, wording
+from portfolio.publishing import charts, records, wording
 from portfolio.publishing.numbers import Numbers, missing
 from portfolio.result import ROUTES
 
@@ -41,8 +41,8 @@ def context(data: PageData, rows: list[dict[str, Any]], n: Numbers) -> dict[str,
         "news": _news(data, rows),
         "target": n.index(target),
         "drawings": {
-            "overview": records.overview(data.results, target),
-            "names": [{"n": names.short(row["characteristic"], 80), "p": row["page"]} for row in rows],
+            "overview": records.overview(target),
+            "decimal": n.decimal,
         },
         "outside_picture": n.count(sum(missing(row["cpk_centered"]) or missing(row["index"]) for row in rows)),
     }
@@ -51,7 +51,7 @@ def context(data: PageData, rows: list[dict[str, Any]], n: Numbers) -> dict[str,
 def card(row: dict[str, Any], n: Numbers, prefix: str) -> dict[str, Any]:
     """One proposal with its picture."""
     told = proposal(row, n)
-    return {**told, "picture": charts.svg("card", records.centering(row), told["caption"], prefix)}
+    return {**told, "picture": charts.svg("card", records.centering(row), told["caption"], prefix, n.decimal)}
 
 
 def proposal(row: dict[str, Any], n: Numbers) -> dict[str, Any]:
@@ -145,7 +145,10 @@ def _lede(total: int, works: int, judged: int, listed: int, n: Numbers) -> str:
     if not listed:
         return f"{head} For none of them would moving the mean alone be enough and worth it."
     tail = "it is" if listed == 1 else "they are"
-    return f"{head} For {n.count(listed)} of them moving the mean alone is enough to reach the target; {tail} ranked by what a move saves."
+    return (
+        f"{head} For {n.count(listed)} of them moving the mean alone is enough to reach the target; {tail} ranked by what "
+        "a move saves."
+    )
 
 
 def _news(data: PageData, rows: list[dict[str, Any]]) -> dict[str, Any]:

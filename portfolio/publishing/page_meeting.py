@@ -31,10 +31,18 @@ def _sheet(row: dict[str, Any], evidence: dict[str, Any] | None, n: Numbers, i: 
     out["control"] = out["histogram"] = None
     if evidence is not None:
         out["control"] = charts.svg(
-            "control", records.control(row, evidence, n.zone)[0], "Location over time with control limits", f"c{i}-"
+            "control",
+            records.control(row, evidence, n.zone)[0],
+            "Location over time with control limits",
+            f"c{i}-",
+            n.decimal,
         )
         out["histogram"] = charts.svg(
-            "histogram", records.histogram(row, evidence), "Values against the specification limits", f"h{i}-"
+            "histogram",
+            records.histogram(row, evidence),
+            "Values against the specification limits",
+            f"h{i}-",
+            n.decimal,
         )
-    out["centering"] = charts.svg("centering", records.centering(row), out["caption"], f"z{i}-")
+    out["centering"] = charts.svg("centering", records.centering(row), out["caption"], f"z{i}-", n.decimal)
     return out

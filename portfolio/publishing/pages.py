@@ -89,7 +89,7 @@ def render(
         text = environment().get_template(template).render(root=root, kit=kit, policy=POLICY, **common, **context)
         return text.encode("utf-8")
 
-    yield "index.html", page("index.html", **page_first.context(data, rows, n))
+    yield "index.html", page("index.html", list_path=list_path, **page_first.context(data, rows, n))
     yield "list.html", page("list.html", list_path=list_path, **page_list.context(rows))
     yield "plain.html", page("plain.html", rows=page_list.plain(rows, n))
     yield "sites.html", page("sites.html", **page_others.sites(compared, n))

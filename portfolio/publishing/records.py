@@ -1,121 +1,110 @@
-"""The rows that pictures are drawn from: one judgement row and its evidence become a few short columns."""
+"""The rows that pictures are drawn from: one judgement row and its evidence become a few short columns.
+
+Numbers are rounded to what a picture can show, a ten-thousandth of its span, never to a number of significant digits:
+1 000 000 003.2 Hz keeps its tenths. Limits and indices stand as they are registered or stored.
+"""
 
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
+from itertools import pairwise
 from typing import Any
 from zoneinfo import ZoneInfo
 
 import numpy as np
 import pandas as pd
 
-from portfolio.publishing.charts import normal_curve
+from portfolio.publishing.charts import DataSet
 from portfolio.publishing.numbers import missing
 
 Row = Mapping[str, Any]
-Rows = dict[str, list[dict[str, Any]]]
+Data = dict[str, DataSet]
 
 
-def control(row: Row, evidence: Row, zone: str) -> tuple[Rows, Rows]:
+def control(row: Row, evidence: Row, zone: str) -> tuple[Data, Data]:
     """Location and spread over time with their control limits; no specification value is among the rows."""
     t = local_milliseconds(evidence["taken"], zone)
     m = len(t)
     beyond, signalled = _flagged(evidence)
-    location = _column(evidence["location"])
-    limits = [_each(_column(evidence[f"location_{side}"]), m) for side in ("lower", "upper")]
-    centre = [_digits(evidence["location_centre"])] * m
+    location, low, high, centre = _together(
+        evidence["location"],
+        evidence["location_lower"],
+        evidence["location_upper"],
+        [evidence["location_centre"]],
+    )
+    spread, spread_low, spread_high, spread_centre = _together(
+        evidence["spread"], evidence["spread_lower"], evidence["spread_upper"], evidence["spread_centre"]
+    )
+    shown = [i for i, value in enumerate(spread) if value is not None]  # the first moving range does not exist
     change = [] if missing(row.get("since")) else [{"t": local_milliseconds([row["since"]], zone)[0]}]
-    spread = _column(evidence["spread"])
-    around = [_each(_column(evidence[f"spread_{side}"]), m) for side in ("lower", "upper", "centre")]
     return (
         {
-            "points": [
-                {"t": a, "v": v, "s": int(i in signalled)} for i, (a, v) in enumerate(zip(t, location, strict=True))
-            ],
-            "limits": _constant_parts(t, limits[0], limits[1], centre),
+            "points": _columns(t, v=location, s=sorted(signalled)),
+            "limits": _steps(t, _each(low, m), _each(high, m), _each(centre, m)),
             "change": change,
         },
         {
-            "spreads": [
-                {"t": a, "v": v, "s": int(i in beyond)}
-                for i, (a, v) in enumerate(zip(t, spread, strict=True))
-                if v is not None
-            ],
-            "spreadlimits": _constant_parts(t, around[0], around[1], around[2]),
+            "spreads": _columns(
+                [t[i] for i in shown],
+                v=[spread[i] for i in shown],
+                s=[place for place, i in enumerate(shown) if i in beyond],
+            ),
+            "spreadlimits": _steps(t, _each(spread_low, m), _each(spread_high, m), _each(spread_centre, m)),
         },
     )
 
 
-def histogram(row: Row, evidence: Row) -> Rows:
+def histogram(row: Row, evidence: Row) -> Data:
     """Bins, the fitted curve and the specification limits; no control limit is among the rows."""
-    counts = [int(c) for c in evidence["bin_count"]]
-    first, width = evidence["bin_start"], evidence["bin_width"]
-    bins = [
-        {"x": _digits(first + i * width), "b": _digits(first + (i + 1) * width), "n": c} for i, c in enumerate(counts)
-    ]
-    curve = []
-    if row["shape"] and not missing(row["sigma_total"]) and row["sigma_total"] > 0:
-        curve = normal_curve(row["mean"], row["sigma_total"], -math.inf, math.inf, sum(counts) * width)
-    return {"bins": bins, "curve": curve, "marks": marks(row)}
+    counts = [int(count) for count in evidence["bin_count"]]
+    start, width = float(evidence["bin_start"]), float(evidence["bin_width"])
+    curve: DataSet = []
+    if not missing(row["shape"]) and not missing(row["sigma_total"]) and row["sigma_total"] > 0:
+        curve = {"normal": [float(row["mean"]), float(row["sigma_total"]), sum(counts) * width]}
+    return {"bins": {"bins": [start, width, counts]}, "curve": curve, "marks": marks(row)}
 
 
-def centering(row: Row) -> Rows:
+def centering(row: Row) -> Data:
     """The process now and with the mean at the aim, between the specification limits."""
-    sigma = row["sigma_total"]
-    window = []
-    if not missing(row["aim_low"]):
-        window = [{"x": _digits(row["aim_low"]), "b": _digits(row["aim_high"])}]
+    sigma = float(row["sigma_total"])
+    window = [] if missing(row["aim_low"]) else [{"x": row["aim_low"], "b": row["aim_high"]}]
     return {
         "window": window,
-        "now": normal_curve(row["mean"], sigma, -math.inf, math.inf, 1.0),
-        "after": normal_curve(row["aim"], sigma, -math.inf, math.inf, 1.0),
+        "now": {"normal": [float(row["mean"]), sigma, 1.0]},
+        "after": {"normal": [float(row["aim"]), sigma, 1.0]},
         "marks": marks(row),
     }
 
 
 def marks(row: Row) -> list[dict[str, Any]]:
     """Specification limits and, where there is one, the aim."""
-    out = [
-        {"x": _digits(row[name]), "k": "limit", "w": word}
-        for name, word in (("lsl", "lower limit"), ("usl", "upper limit"))
-        if not missing(row[name])
-    ]
-    if not missing(row.get("aim")):
-        out.append({"x": _digits(row["aim"]), "k": "aim", "w": "aim"})
-    return out
+    named = (("lsl", "limit", "lower limit"), ("usl", "limit", "upper limit"), ("aim", "aim", "aim"))
+    return [{"x": row[name], "k": kind, "w": word} for name, kind, word in named if not missing(row.get(name))]
 
 
-def history(rows: pd.DataFrame, target: float, zone: str) -> Rows:
+def history(rows: pd.DataFrame, target: float, zone: str) -> Data:
     """The index of earlier judgements with its bounds."""
     kept = rows[rows["index"].notna()]
-    t = local_milliseconds(kept["as_of"], zone)
+    index, low, high = (_rounded(kept[name], 4) for name in ("index", "index_low", "index_high"))
     return {
-        "history": [
-            {"t": a, "v": _digits(v), "l": _digits(low), "u": _digits(high)}
-            for a, v, low, high in zip(t, kept["index"], kept["index_low"], kept["index_high"], strict=True)
-        ],
+        "history": _columns(local_milliseconds(kept["as_of"], zone), v=index, l=low, u=high),
         "target": [{"v": target}],
     }
 
 
-def overview(results: pd.DataFrame, target: float) -> Rows:
-    """Index now against index if only the mean were moved; predictable characteristics with both."""
-    some = results[results["cpk_centered"].notna() & results["index"].notna()]
+def overview(target: float) -> Data:
+    """Frame of the overview; its points are the list's columns, which the page loads anyway."""
     return {
         "field": [{"x": -0.5, "x2": target, "y": target, "y2": 3.0, "w": "moving the mean is enough"}],
         "targets": [{"v": target}],
-        "points": [
-            {"x": _digits(x), "y": _digits(y), "k": "listed" if pd.notna(rank) else "other", "i": int(i)}
-            for i, x, y, rank in zip(some.index, some["index"], some["cpk_centered"], some["rank"], strict=True)
-        ],
     }
 
 
 def local_milliseconds(moments: Any, zone: str) -> list[int]:
     """Local clock time as milliseconds, so that the axis shows the plant's day."""
     stamps = pd.DatetimeIndex(np.asarray(moments, dtype="datetime64[us]")).tz_localize("UTC").tz_convert(ZoneInfo(zone))
-    return list((stamps.tz_localize(None).asi8 // 1000).tolist())
+    return [int(moment) for moment in stamps.tz_localize(None).as_unit("ms").asi8]
 
 
 def _flagged(evidence: Row) -> tuple[set[int], set[int]]:
@@ -127,15 +116,31 @@ def _flagged(evidence: Row) -> tuple[set[int], set[int]]:
     return beyond, signalled
 
 
-def _column(values: Any) -> list[float | None]:
-    """Numbers of one picture to six digits of the largest; None where there is none."""
-    x = np.asarray(values, dtype=np.float64)
-    there = np.isfinite(x)
-    if not there.any():
-        return [None] * len(x)
-    largest = float(np.abs(x[there]).max())
-    rounded = np.round(x, 5 - math.floor(math.log10(largest))) if largest else x
-    return [v if ok else None for v, ok in zip(rounded.tolist(), there.tolist(), strict=True)]
+def _together(*columns: Any) -> list[list[float | None]]:
+    """Columns of one picture, rounded to a ten-thousandth of what they span together; None where there is no number."""
+    arrays = [np.asarray(column, dtype=np.float64) for column in columns]
+    everything = np.concatenate(arrays)
+    there = everything[np.isfinite(everything)]
+    span = float(np.ptp(there)) if there.size else 0.0
+    digits = 4 - math.floor(math.log10(span)) if span > 0 else None
+    return [_rounded(array, digits) for array in arrays]
+
+
+def _rounded(column: Any, digits: int | None) -> list[float | None]:
+    values = np.asarray(column, dtype=np.float64).tolist()
+    if digits is None:
+        return [value if math.isfinite(value) else None for value in values]
+    return [round(value, digits) if math.isfinite(value) else None for value in values]
+
+
+def _columns(t: Sequence[int], **columns: list[Any]) -> dict[str, Any]:
+    """Rows over time in the short form of `charts.expanded`."""
+    steps = [_short((after - before) / 1000) for before, after in pairwise(t)]
+    return {"columns": {"t": [*t[:1], *steps], **columns}}
+
+
+def _short(seconds: float) -> float | int:
+    return int(seconds) if seconds.is_integer() else seconds
 
 
 def _each(values: list[float | None], m: int) -> list[float | None]:
@@ -143,7 +148,7 @@ def _each(values: list[float | None], m: int) -> list[float | None]:
     return values * m if len(values) == 1 else values
 
 
-def _constant_parts(t: list[int], lower: list[Any], upper: list[Any], centre: list[Any]) -> list[dict[str, Any]]:
+def _steps(t: list[int], lower: list[Any], upper: list[Any], centre: list[Any]) -> list[dict[str, Any]]:
     """Limits as steps: only where they change, and at the last subgroup."""
     out = []
     before = None
@@ -152,7 +157,3 @@ def _constant_parts(t: list[int], lower: list[Any], upper: list[Any], centre: li
             out.append({"t": t[i], "l": now[0], "u": now[1], "c": now[2]})
         before = now
     return out
-
-
-def _digits(value: Any) -> float | None:
-    return None if missing(value) or not math.isfinite(value) else float(f"{value:.6g}")

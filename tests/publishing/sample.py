@@ -426,7 +426,8 @@ def _others(results: pd.DataFrame, hostile: bool) -> dict[str, pd.DataFrame]:
         earlier.append(part.assign(run_id=RUN - weeks))
     runs = [
         {"run_id": RUN - weeks, "slot": None, "as_of": AS_OF - timedelta(weeks=weeks),
-         "judged_at": AS_OF - timedelta(weeks=weeks), "window_from": BEGAN - timedelta(weeks=weeks), "program": "portfolio 0.1.0"}
+         "judged_at": AS_OF - timedelta(weeks=weeks), "window_from": BEGAN - timedelta(weeks=weeks),
+         "program": "portfolio 0.1.0"}
         for weeks in range(4, -1, -1)
     ]  # fmt: skip
     return {
