@@ -146,8 +146,8 @@ def _lede(total: int, works: int, judged: int, listed: int, n: Numbers) -> str:
         return f"{head} For none of them would moving the mean alone be enough and worth it."
     tail = "it is" if listed == 1 else "they are"
     return (
-        f"{head} For {n.count(listed)} of them moving the mean alone is enough to reach the target; {tail} ranked by what "
-        "a move saves."
+        f"{head} For {n.count(listed)} of them moving the mean alone is enough to reach the target; {tail} ranked by "
+        "what a move saves."
     )
 
 
