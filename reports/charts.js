@@ -101,6 +101,10 @@
       const limit = limitAt(own.limits, p.t);
       return [when(p.t), p.v, limit.l, limit.u, p.s ? "yes" : ""];
     })],
+    spread: (own) => [["Time", "Value", "Lower control limit", "Upper control limit", "Signal"], own.spreads.map((p) => {
+      const limit = limitAt(own.spreadlimits, p.t);
+      return [when(p.t), p.v, limit.l, limit.u, p.s ? "yes" : ""];
+    })],
     histogram: (own) => [["From", "To", "Values"], own.bins.map((bin) => [bin.x, bin.b, bin.n])],
     history: (own) => [["Judged up to", "Index", "Lower bound", "Upper bound"], own.history.map((h) => [when(h.t), h.v, h.l, h.u])],
   };
