@@ -16,11 +16,11 @@ from zoneinfo import ZoneInfo
 
 import typer
 
+from portfolio import summary
 from portfolio.errors import DONE, FAILED, NEEDS_A_PERSON, WRONG_USE, PortfolioError, UsageError
 from portfolio.version import __version__
 
 if TYPE_CHECKING:
-    from portfolio.job import JudgeReport, PublishReport, PullReport
     from portfolio.plan import Plan
     from portfolio.registry import Registry
 
@@ -126,7 +126,7 @@ def pull(plan: PlanFile = DEFAULT_PLAN) -> None:
     registry = _registry(loaded)
     with _progress() as progress, progress.stage("pull"):
         report = job.pull(loaded, registry, progress=progress)
-    _print_pull(report)
+    summary.pulled(report)
     raise typer.Exit(NEEDS_A_PERSON if report.needs_a_person else DONE)
 
 
@@ -142,7 +142,7 @@ def judge(plan: PlanFile = DEFAULT_PLAN, as_of: AsOf = None) -> None:
     registry = _registry(loaded)
     with _progress() as progress, progress.stage("judge"):
         report = job.judge(loaded, registry, as_of=_moment(as_of, loaded), progress=progress)
-    _print_judge(report)
+    summary.judged(report)
 
 
 @app.command()
@@ -156,7 +156,7 @@ def publish(plan: PlanFile = DEFAULT_PLAN) -> None:
     loaded = _plan(plan)
     with _progress() as progress, progress.stage("publish"):
         report = job.publish(loaded, progress=progress)
-    _print_publish(report)
+    summary.published(report)
 
 
 @app.command()
@@ -227,14 +227,7 @@ def explain(
             json.dumps({"paragraphs": told.paragraphs, "facts": told.facts}, indent=1, default=str, ensure_ascii=False)
         )
         return
-    import textwrap
-
-    width = 100
-    for heading, sentences in told.paragraphs:
-        print(heading)
-        for sentence in sentences:
-            print(textwrap.fill(sentence, width, initial_indent="  ", subsequent_indent="  "))
-        print()
+    summary.explained(told)
 
 
 @app.command()
@@ -378,36 +371,10 @@ def _progress() -> Any:
 def _finish_run(plan: Plan, job: Any, registry: Registry, *, as_of: datetime | None, slot: str | None = None) -> None:
     with _progress() as progress:
         report = job.run(plan, registry, as_of=as_of, slot=slot, progress=progress)
-    _print_pull(report.pull)
-    _print_judge(report.judge)
-    _print_publish(report.publish)
+    summary.pulled(report.pull)
+    summary.judged(report.judge)
+    summary.published(report.publish)
     raise typer.Exit(NEEDS_A_PERSON if report.needs_a_person else DONE)
-
-
-def _print_pull(report: PullReport) -> None:
-    for source in report.sources:
-        print(
-            f"{source.name}: {source.status}; {source.items} items, {source.read} rows read, {source.new} new, "
-            f"{source.known} already known, {source.corrected} corrected, {source.rejected} rejected"
-            + (f", {source.unregistered} of unregistered characteristics" if source.unregistered else "")
-        )
-        for item, reason in source.refused:
-            print(f"  refused {item}: {reason}")
-        for message in source.messages:
-            print(f"  {message}")
-
-
-def _print_judge(report: JudgeReport) -> None:
-    cells = ", ".join(
-        f"{count} {cell if cell == 'not judged' else f'({cell})'}" for cell, count in report.counts.items()
-    )
-    print(f"judged {sum(report.counts.values())} characteristics up to {report.as_of:%Y-%m-%d %H:%M} UTC: {cells}")
-    print(f"centering alone is expected to be enough for {report.listed}")
-
-
-def _print_publish(report: PublishReport) -> None:
-    print(f"published {report.folder} ({report.files} files, {report.bytes / 1e6:.1f} MB)")
-    print(f"open {report.index.resolve()}")
 
 
 def _moment(text: str | None, plan: Plan, *, whole_day: bool = True) -> datetime | None:

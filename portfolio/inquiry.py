@@ -9,8 +9,11 @@ from typing import TYPE_CHECKING, Any
 import pandas as pd
 
 from portfolio import export as formats
+from portfolio import slots
 from portfolio.errors import UsageError
+from portfolio.health import BEAT_SECONDS, read_health
 from portfolio.plan import Plan
+from portfolio.result import CONTRACT_COLUMNS
 from portfolio.session import nearest, newest, reading, text, utc
 
 if TYPE_CHECKING:
@@ -44,6 +47,8 @@ def export(plan: Plan, folder: Path) -> list[Path]:
         ranking = store.frame("judgement/ranking_of_run", run_id=run_id)
         history = store.frame("history/index_history", run_id=run_id)
     judgement["reasons"] = [wording.reasons(row) for row in judgement.to_dict("records")]
+    first = list(CONTRACT_COLUMNS)
+    judgement = judgement[first + [name for name in judgement if name not in first]]
     return formats.write(folder, {"judgement": judgement, "ranking": ranking, "history": history})
 
 
@@ -91,12 +96,10 @@ def status(plan: Plan) -> dict[str, Any]:
 
 def _service(plan: Plan) -> dict[str, Any]:
     """Next times by the plan, and what the service last said of itself."""
-    from portfolio import schedule, slots
-
     now, zone = utc(None), plan.portfolio.timezone
-    health = schedule.read_health(plan)
+    health = read_health(plan)
     beat = health.get("beat")
-    alive = beat is not None and now - datetime.fromisoformat(str(beat)) < timedelta(seconds=4 * schedule.BEAT_SECONDS)
+    alive = beat is not None and now - datetime.fromisoformat(str(beat)) < timedelta(seconds=4 * BEAT_SECONDS)
     upcoming = {
         f"next_{name}": None if moment is None else moment.isoformat()
         for name, cron in (("pull", plan.schedule.pull), ("publish", plan.schedule.publish))

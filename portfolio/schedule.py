@@ -20,6 +20,7 @@ from datetime import UTC, datetime
 from pathlib import Path
 from typing import Any
 
+from apscheduler.events import EVENT_SCHEDULER_STARTED
 from apscheduler.executors.pool import ThreadPoolExecutor
 from apscheduler.schedulers.base import BaseScheduler
 from apscheduler.schedulers.blocking import BlockingScheduler
@@ -27,10 +28,10 @@ from apscheduler.triggers.interval import IntervalTrigger
 
 from portfolio import slots
 from portfolio.errors import NEEDS_A_PERSON, StoreBusyError
+from portfolio.health import BEAT_SECONDS, health_path
 from portfolio.locks import hold
 from portfolio.plan import Plan
 
-BEAT_SECONDS = 30
 GRACE_SECONDS = 5
 "Time between asking a run to end and ending it."
 PR_SET_PDEATHSIG = 1
@@ -136,16 +137,31 @@ def _serve(plan: Plan) -> None:
     service.add_to(scheduler)
     scheduler.add_job(service.catch_up, id="catch up")
 
-    def stop(number: int, _frame: object) -> None:
-        say("stopping", signal=signal.Signals(number).name)
+    stopping, running = threading.Event(), threading.Event()
+    received: list[int] = []
+
+    def started(_event: object) -> None:
+        service.beat()
+        say("serving", plan=str(plan.path), pid=os.getpid())
+        running.set()
+
+    def end_in_order() -> None:
+        # In a thread of its own: a signal handler may interrupt the very print or wait it would need.
+        stopping.wait()
+        say("stopping", signal=signal.Signals(received[0]).name)
         child.stop()
-        # The scheduler must not be shut down from inside the signal handler of its own thread.
-        threading.Thread(target=scheduler.shutdown, kwargs={"wait": True}).start()
+        running.wait()
+        scheduler.shutdown(wait=True)
+
+    def stop(number: int, _frame: object) -> None:
+        if not received:
+            received.append(number)
+            stopping.set()
 
     for number in (signal.SIGTERM, signal.SIGINT):
         signal.signal(number, stop)
-    service.beat()
-    say("serving", plan=str(plan.path), pid=os.getpid())
+    scheduler.add_listener(started, EVENT_SCHEDULER_STARTED)
+    threading.Thread(target=end_in_order, daemon=True).start()
     scheduler.start()
     say("stopped")
 
@@ -214,17 +230,6 @@ def last_published_slot(plan: Plan) -> str | None:
         return None
     slot = json.loads(answer.stdout).get("last_slot")
     return slot if isinstance(slot, str) else None
-
-
-def health_path(plan: Plan) -> Path:
-    """The health file of the service, beside the store."""
-    return plan.store_path.with_name(plan.store_path.name + ".health.json")
-
-
-def read_health(plan: Plan) -> dict[str, Any]:
-    """What the service last said of itself; empty when it never ran here."""
-    path = health_path(plan)
-    return dict(json.loads(path.read_text(encoding="utf-8"))) if path.exists() else {}
 
 
 def say(event: str, **facts: object) -> None:

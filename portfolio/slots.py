@@ -61,6 +61,6 @@ def due(cron: str, zone: str, last_published: str | None, now: datetime) -> list
 
 
 def following(cron: str, zone: str, now: datetime) -> datetime | None:
-    """The next moment at which the cron line fires, in UTC; None if it never does."""
-    moment = trigger(cron, zone).get_next_fire_time(None, now.astimezone(UTC))
+    """The next moment after `now` at which the cron line fires, in UTC; None if it never does."""
+    moment = trigger(cron, zone).get_next_fire_time(None, now.astimezone(UTC) + timedelta(microseconds=1))
     return None if moment is None else moment.astimezone(UTC)

@@ -132,7 +132,9 @@ def test_an_expected_lean_of_neighbours_is_not_called_unstable(judged):
 
 def test_true_means_and_sigmas_lie_where_the_judgement_says(judged):
     """Known truth: means within 4 standard errors, sigmas within 4 standard errors, for the calm normal processes."""
-    some = judged[judged["scenario"].isin(["capable", "reaches", "too wide", "borderline"]) & judged["sigma_total"].notna()]
+    some = judged[
+        judged["scenario"].isin(["capable", "reaches", "too wide", "borderline"]) & judged["sigma_total"].notna()
+    ]
     away = (some["mean"] - some["mean_true"]).abs() / (some["sigma"] / some["n_effective"] ** 0.5)
     assert (away < 4).all()
     ratio = some["sigma_total"] / some["sigma"]

@@ -29,7 +29,9 @@ def some_measurements(seed: int = 1, count: int = 6, m: int = 40, n: int = 5) ->
         if i % 3 == 2:
             value += 0.25
         frames.append(
-            pd.DataFrame({"characteristic": f"C{i}", "taken_at": taken, "value": value, "subgroup": np.arange(m * n) // n})
+            pd.DataFrame(
+                {"characteristic": f"C{i}", "taken_at": taken, "value": value, "subgroup": np.arange(m * n) // n}
+            )
         )
     return pd.concat(frames, ignore_index=True)
 
@@ -46,18 +48,26 @@ def same(one: pd.DataFrame, two: pd.DataFrame) -> None:
     for name in WORDS:
         assert one[name].fillna("").tolist() == two[name].fillna("").tolist(), name
     for name in NUMBERS:
-        np.testing.assert_allclose(one[name].astype(float), two[name].astype(float), rtol=1e-9, atol=1e-12, err_msg=name)
+        np.testing.assert_allclose(
+            one[name].astype(float), two[name].astype(float), rtol=1e-9, atol=1e-12, err_msg=name
+        )
 
 
 def test_python_and_the_command_give_the_same_numbers(demo_run):
     with Store.open(demo_run.plan.store_path, read_only=True) as store:
-        measurements = store.connection.sql(
-            """select name as characteristic, taken_at, value, s.label as subgroup, m.label as stream
+        measurements = (
+            store.connection.sql(
+                """select name as characteristic, taken_at, value, s.label as subgroup, m.label as stream
             from measurements join characteristics using (characteristic_id)
             left join labels as s on s.label_id = subgroup_no left join labels as m on m.label_id = stream_no"""
-        ).to_arrow_table().to_pandas()
+            )
+            .to_arrow_table()
+            .to_pandas()
+        )
     registered = pd.read_csv(demo_run.plan.registry_path)
-    unlogged = ~registered["characteristic"].isin(demo_run.truth.loc[demo_run.truth["scenario"] == "re-centred", "characteristic"])
+    unlogged = ~registered["characteristic"].isin(
+        demo_run.truth.loc[demo_run.truth["scenario"] == "re-centred", "characteristic"]
+    )
     stored = demo_run.results
     result = portfolio.judge(measurements, registered.assign(**{"class": registered["class"].where(registered["class"] != "critical"),
                              "target_cpk": np.where(registered["class"] == "critical", 1.67, np.nan)}),

@@ -16,9 +16,10 @@ from apscheduler.executors.debug import DebugExecutor
 from apscheduler.schedulers.base import BaseScheduler
 
 from portfolio.errors import StoreBusyError
+from portfolio.health import health_path
 from portfolio.locks import hold
 from portfolio.plan import Plan, Portfolio, Schedule
-from portfolio.schedule import Child, Service, health_path, serve
+from portfolio.schedule import Child, Service, serve
 
 
 class SteppedScheduler(BaseScheduler):
@@ -148,5 +149,5 @@ def test_sigterm_ends_the_service_in_order(tmp_path):
             break
     os.kill(process.pid, signal.SIGTERM)
     rest = process.stderr.read()
-    assert process.wait(30) == 0
+    assert process.wait(30) == 0, rest
     assert '"stopped"' in rest
