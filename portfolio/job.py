@@ -60,6 +60,8 @@ class PublishReport:
     files: int
     bytes: int
     seconds: float
+    left_over: tuple[Path, ...] = ()
+    "Folders of old issues that could not be removed now; the next publishing tries again."
 
 
 @dataclass(frozen=True)
@@ -148,7 +150,7 @@ def publish(plan: Plan, *, progress: Progress | None = None) -> PublishReport:
     index = plan.report_path / "index.html"
     if not index.is_file():
         raise PublishError(f"{index} was not written although publishing ended. Check the disk and publish again.")
-    return PublishReport(issue.folder, index, issue.files, issue.bytes, time.perf_counter() - began)
+    return PublishReport(issue.folder, index, issue.files, issue.bytes, time.perf_counter() - began, issue.left_over)
 
 
 def run(

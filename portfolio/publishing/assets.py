@@ -1,4 +1,9 @@
-"""Style and scripts of an issue, named by their content so that an old page never meets a new script."""
+"""Style and scripts of an issue, named by their content so that an old page never meets a new script.
+
+The drawing script comes out of the vl-convert wheel: nothing is fetched, and the published folder needs no network. It
+holds a version of Vega's interpreter older than the fix of CVE-2025-59840, which needs a specification from outside and
+a view in the window's namespace; pages here draw only their own compiled templates, and data never become part of one.
+"""
 
 from __future__ import annotations
 
@@ -13,15 +18,8 @@ from portfolio import shipped
 from portfolio.publishing import charts
 
 DRAWING = f"drawing-{version('vl-convert-python')}"
-LICENCES = """\
-drawing-*.js contains Vega, Vega-Lite, Vega-Embed and the Vega expression interpreter
-(BSD-3-Clause, (c) University of Washington Interactive Data Lab and contributors) and D3 modules
-(ISC / BSD-3-Clause, (c) Mike Bostock and contributors), as packed by vl-convert (BSD-3-Clause).
-
-Redistribution and use in source and binary forms, with or without modification, are permitted provided that the
-copyright notices, this list of conditions and the following disclaimer are retained. THIS SOFTWARE IS PROVIDED BY THE
-COPYRIGHT HOLDERS AND CONTRIBUTORS "AS IS" AND ANY EXPRESS OR IMPLIED WARRANTIES ARE DISCLAIMED.
-"""
+DRAWING_SHA256 = "6353574a4faab8bf4d8dcfbce7fb6c52913424d2028e4fbade6647541911bce1"
+"Digest of the drawing script that vl-convert-python 1.9.0.post1 packs."
 
 
 @dataclass(frozen=True)
@@ -36,24 +34,6 @@ class Assets:
     files: dict[str, bytes]
 
 
-def _drawing(issues: list[Path]) -> bytes:
-    """The drawing script of this version of vl-convert; taken over from an earlier issue where one has it whole.
-
-    Packing it takes two seconds and gives the same bytes each time.
-    """
-    for issue in reversed(issues):
-        for path in (issue / "assets").glob(f"{DRAWING}.*.js"):
-            content = path.read_bytes()
-            if path.name == hashed(f"{DRAWING}.js", content):
-                return content
-    # Wrapped: the bundle declares many short names at top level that would collide with ours.
-    return ("(()=>{" + _bundle() + "\n})();\n").encode()
-
-
-def _bundle() -> str:
-    return str(vl_convert.javascript_bundle())  # type: ignore[call-arg]  # its stub asks for an optional argument
-
-
 def collect(issues: list[Path]) -> Assets:
     """Everything that lies in `assets/` besides the list's data; `issues` are the ones published before."""
     sources = {
@@ -65,7 +45,7 @@ def collect(issues: list[Path]) -> Assets:
     }
     paths = {key: f"assets/{hashed(name, content)}" for key, (name, content) in sources.items()}
     files = {paths[key]: content for key, (_, content) in sources.items()}
-    files["assets/LICENSES.txt"] = LICENCES.encode()
+    files["assets/LICENSES.txt"] = shipped.text("reports/drawing_licences.txt").encode()
     return Assets(**paths, files=files)
 
 
@@ -73,3 +53,22 @@ def hashed(name: str, content: bytes) -> str:
     """`style.css` becomes `style.1a2b3c4d.css`."""
     stem, _, ending = name.rpartition(".")
     return f"{stem}.{hashlib.sha256(content).hexdigest()[:8]}.{ending}"
+
+
+def _drawing(issues: list[Path]) -> bytes:
+    """The drawing script; taken over from an earlier issue that has exactly the known one.
+
+    Packing it takes two seconds and gives the same bytes each time. The folder may be writable by others, so a copy
+    counts only by the digest that stands in this program.
+    """
+    for issue in reversed(issues):
+        for path in (issue / "assets").glob(f"{DRAWING}.*.js"):
+            content = path.read_bytes()
+            if hashlib.sha256(content).hexdigest() == DRAWING_SHA256:
+                return content
+    # Wrapped: the bundle declares many short names at top level that would collide with ours.
+    return ("/* Licences: LICENSES.txt */(()=>{" + _bundle() + "\n})();\n").encode()
+
+
+def _bundle() -> str:
+    return str(vl_convert.javascript_bundle())  # type: ignore[call-arg]  # its stub asks for an optional argument
