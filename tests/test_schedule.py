@@ -140,14 +140,13 @@ def test_a_child_that_hangs_is_ended_after_its_time(tmp_path, monkeypatch):
 def test_sigterm_ends_the_service_in_order(tmp_path):
     (tmp_path / "plan.toml").write_text('[portfolio]\ntitle = "T"\n')
     (tmp_path / "registry.csv").write_text("characteristic,lsl,usl\nA,1,2\n")
-    process = subprocess.Popen(
-        [sys.executable, "-m", "portfolio", "schedule", str(tmp_path / "plan.toml")], stderr=subprocess.PIPE, text=True
-    )
-    assert process.stderr is not None
-    for line in process.stderr:
-        if '"serving"' in line:
-            break
-    os.kill(process.pid, signal.SIGTERM)
-    rest = process.stderr.read()
-    assert process.wait(30) == 0, rest
+    command = [sys.executable, "-m", "portfolio", "schedule", str(tmp_path / "plan.toml")]
+    with subprocess.Popen(command, stderr=subprocess.PIPE, text=True) as process:
+        assert process.stderr is not None
+        for line in process.stderr:
+            if '"serving"' in line:
+                break
+        os.kill(process.pid, signal.SIGTERM)
+        rest = process.stderr.read()
+        assert process.wait(30) == 0, rest
     assert '"stopped"' in rest
