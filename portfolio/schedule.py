@@ -56,11 +56,15 @@ class Service:
         """Register the two crons and the beat; one executor, so that runs never overlap."""
         zone = self.plan.portfolio.timezone
         options: dict[str, Any] = {"max_instances": 1, "coalesce": True, "misfire_grace_time": None}
+        # The catch-up is an early firing of the same job, so that it can never run beside the planned one.
+        early = {"next_run_time": self.now()} if self.missed() else {}
         for name, cron, job in (
             ("pull", self.plan.schedule.pull, self.pull),
             ("publish", self.plan.schedule.publish, self.publish),
         ):
-            scheduler.add_job(job, slots.trigger(cron, zone), id=name, **options)
+            scheduler.add_job(
+                job, slots.trigger(cron, zone), id=name, **options, **(early if name == "publish" else {})
+            )
         scheduler.add_job(self.beat, IntervalTrigger(seconds=BEAT_SECONDS), id="beat", executor="beat", **options)
 
     def pull(self) -> None:
@@ -84,11 +88,10 @@ class Service:
             self.state["last_slot"] = slot
             self.beat()
 
-    def catch_up(self) -> None:
-        """Run the newest slot that was missed while the service was down, if any."""
+    def missed(self) -> bool:
+        """Whether a slot passed while the service was down."""
         zone = self.plan.portfolio.timezone
-        if slots.due(self.plan.schedule.publish, zone, self.state.get("last_slot"), self.now()):
-            self.publish()
+        return bool(slots.due(self.plan.schedule.publish, zone, self.state.get("last_slot"), self.now()))
 
     def beat(self) -> None:
         """Write the health file (replaced in one step, so that a reader never sees half of it)."""
@@ -135,7 +138,6 @@ def _serve(plan: Plan) -> None:
         timezone=plan.portfolio.timezone, executors={"default": ThreadPoolExecutor(1), "beat": ThreadPoolExecutor(1)}
     )
     service.add_to(scheduler)
-    scheduler.add_job(service.catch_up, id="catch up")
 
     stopping, running = threading.Event(), threading.Event()
     received: list[int] = []

@@ -56,7 +56,6 @@ def served(plan, begin, until, codes=(), last_slot=None):
         service.add_to(scheduler)
         scheduler.remove_job("beat") if scheduler.get_job("beat") else None
         scheduler.start()
-        service.catch_up()
         while datetime.now(UTC) < until:
             wait = scheduler.step()
             clock.shift(timedelta(seconds=max(wait or 0, 0.001)))
