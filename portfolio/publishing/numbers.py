@@ -73,9 +73,17 @@ class Numbers:
         text = self.value(value, scale, sign=sign)
         return text if missing(unit) or text == "–" else f"{text}{SPACE}{unit}"
 
+    def spread(self, sigma: Any, unit: Any) -> str:
+        """A standard deviation with its unit, to about three digits."""
+        return self.quantity(sigma, unit, None if missing(sigma) else sigma / 10)
+
     def count(self, value: Any) -> str:
         """A whole number in groups of three."""
         return "–" if missing(value) else f"{round(value):,}".replace(",", THIN)
+
+    def counted(self, value: Any, one: str, many: str = "") -> str:
+        """A whole number with its noun: '1 value', '3 values'."""
+        return f"{self.count(value)}{SPACE}{one if not missing(value) and value == 1 else many or one + 's'}"
 
     def rough(self, value: Any) -> str:
         """A count that is known only roughly: two significant digits."""
