@@ -38,6 +38,8 @@ def judged(report: JudgeReport) -> None:
 def published(report: PublishReport) -> None:
     """Where the report is."""
     print(f"published {report.folder} ({report.files} files, {report.bytes / 1e6:.1f} MB)")
+    for path in report.left_over:
+        print(f"{path} could not be removed; close what has it open, or the next publishing tries again")
     print(f"open {report.index.resolve()}")
 
 

@@ -51,7 +51,7 @@ def _named(name: str) -> alt.NamedData:
 def _dressed(chart: alt.LayerChart, *, height: int, width: int = WIDTH) -> alt.LayerChart:
     return (
         chart.properties(width=width, height=height, autosize=alt.AutoSizeParams(type="fit-x", contains="padding"))
-        .configure(background="transparent", font=FONT, padding=4)
+        .configure(background="transparent", font=FONT, padding=4, aria=False)
         .configure_view(stroke=None)
         .configure_axis(
             labelColor=MUTED, titleColor=MUTED, domainColor=LINE, tickColor=LINE, gridColor=LINE, gridOpacity=0.6,
@@ -179,12 +179,10 @@ def _card() -> alt.LayerChart:
 
 def _history() -> alt.LayerChart:
     rows, target = _named("history"), _named("target")
-    band = alt.Chart(rows).mark_area(color="var(--fill)").encode(x=_time(), y=_measured("l"), y2="u:Q")
-    line = (
-        alt.Chart(rows)
-        .mark_line(stroke=PROCESS, point={"fill": PROCESS, "size": 18})
-        .encode(x=_time(), y=_measured("v"))
-    )
+    axis, scale = alt.Axis(tickCount=5, minExtent=LABEL_ROOM), alt.Scale(zero=False)
+    low, index = (alt.Y(f"{field}:Q", title=None, scale=scale, axis=axis) for field in "lv")
+    band = alt.Chart(rows).mark_area(color="var(--fill)").encode(x=_time(), y=low, y2="u:Q")
+    line = alt.Chart(rows).mark_line(stroke=PROCESS, point={"fill": PROCESS, "size": 18}).encode(x=_time(), y=index)
     rule = alt.Chart(target).mark_rule(stroke=SPECIFICATION, strokeDash=[6, 3]).encode(y=alt.Y("v:Q"))
     return _dressed(alt.layer(band, line, rule), height=150)
 

@@ -68,8 +68,8 @@ def svg(kind: str, data: Mapping[str, DataSet], label: str, prefix: str, decimal
     locale = {"decimal": decimal, "thousands": "\u202f", "grouping": [3], "currency": ["", ""]}
     text = vl_convert.vega_to_svg(spec, format_locale=locale, allowed_base_urls=[])
     text = re.sub(r"<[^<>]*>", lambda tag: _fitting(tag.group(), prefix), text)
-    opening = f'<svg role="img" aria-label="{escape(label)}" class="drawn" '
-    return Markup(text.replace("<svg ", opening, 1))  # Vega escapes its texts; the label is escaped above
+    said = f' role="img" aria-label="{escape(label)}" class="drawn"'
+    return Markup(text.replace(' class="marks"', said, 1))  # Vega escapes its texts; the label is escaped here
 
 
 def _fitting(tag: str, prefix: str) -> str:
