@@ -14,7 +14,7 @@ Share = Annotated[float, Field(ge=0.0, le=1.0)]
 
 
 class _Section(BaseModel):
-    model_config = ConfigDict(extra="forbid", frozen=True, str_strip_whitespace=True)
+    model_config = ConfigDict(extra="forbid", frozen=True)
 
 
 class Portfolio(_Section):

@@ -4,8 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 
-from portfolio.statistics.exchangeability import equal_lengths
-from portfolio.statistics.ragged import Bools, Floats, Ints
+from portfolio.statistics.ragged import Bools, Floats, Ints, equal_lengths
 
 
 def corrected(serial: Floats, m: Ints) -> Floats:

@@ -6,19 +6,16 @@ likely, whatever their shape. Series of equal length are handled together as the
 
 from __future__ import annotations
 
-from collections.abc import Iterator
 from dataclasses import dataclass, field
 
 import numpy as np
 from scipy.special import ndtri
 
 from portfolio.statistics import calibration
-from portfolio.statistics.ragged import Bools, Floats, Ints
+from portfolio.statistics.ragged import Bools, Floats, Ints, equal_lengths
 
 LEAST = 8
 "Below this many subgroups no statistic is defined."
-CHUNK = 2_000_000
-"Values worked on at once: keeps a portfolio of any size below some 200 MB."
 SHORTEST_PERIOD = 2.5
 LEAST_CYCLES = 4
 
@@ -101,18 +98,6 @@ def _spread(out: Parts, rows: Ints, y: Floats, spread: Floats, place: Ints, sing
         statistic, at = step_statistic(scores)
         out.p_spread[rows[chosen]] = np.where(moving, calibration.p_value(null, statistic, m), np.nan)
         out.spread_at[rows[chosen]] = np.where(moving, at + shift, -1)
-
-
-def equal_lengths(start: Ints) -> Iterator[tuple[int, Ints]]:
-    """Groups of equal length, in pieces of bounded size: (length, row numbers)."""
-    n = np.diff(start)
-    order = np.argsort(n, kind="stable")
-    lengths, first = np.unique(n[order], return_index=True)
-    for length, begin, end in zip(lengths.tolist(), first.tolist(), [*first[1:].tolist(), len(order)], strict=True):
-        rows = order[begin:end]
-        piece = max(1, CHUNK // max(length, 1))
-        for at in range(0, len(rows), piece):
-            yield length, rows[at : at + piece]
 
 
 def normal_scores(x: Floats) -> Floats:

@@ -12,8 +12,7 @@ import numpy as np
 from scipy import stats
 
 from portfolio.statistics import ragged
-from portfolio.statistics.exchangeability import equal_lengths
-from portfolio.statistics.ragged import Floats, Ints
+from portfolio.statistics.ragged import Floats, Ints, equal_lengths
 
 Z95 = 1.645
 "Normal 95 % point to the digits of the study."
@@ -59,8 +58,10 @@ def isolated_extremes(values: Floats, start: Ints, subgroup_start: Ints, of: Int
     error = FORGIVING / np.sqrt(np.maximum(n, 1))
     owner = np.repeat(np.arange(len(n)), n)
     group_owner = np.repeat(np.arange(len(m)), m)
-    p_group = np.zeros(int(of[-1]))
-    p = np.zeros(len(m))
+    df = np.maximum(DF_SHARE * m, 1)
+    # All three maps share m and df, so the largest p belongs to the smallest z.
+    smallest = np.full(int(of[-1]), np.inf)
+    farthest = np.full(len(m), np.inf)
     for shift in (-1, 0, 1):
         mapped = _mapped(values, owner, skew + shift * error, middle, middle - low, high - middle)
         location = ragged.means(mapped, subgroup_start)
@@ -69,14 +70,14 @@ def isolated_extremes(values: Floats, start: Ints, subgroup_start: Ints, of: Int
         with np.errstate(divide="ignore", invalid="ignore"):
             z = np.abs(location - centre[group_owner]) / scale[group_owner]
         z = np.where(np.isfinite(z), z, 0.0)
-        single = 2 * stats.t.sf(z, np.maximum(DF_SHARE * m, 1)[group_owner])
-        sidak = -np.expm1(m[group_owner] * np.log1p(-np.minimum(single, 1 - 1e-12)))
-        p_group = np.maximum(p_group, sidak)
-        smallest, _ = ragged.extremes(sidak, of)
-        p = np.fmax(p, smallest)
+        smallest = np.minimum(smallest, z)
+        farthest = np.fmin(farthest, ragged.extremes(z, of)[1])
     usable = np.isfinite(skew) & (m > 0)
-    p = np.where(usable, p, np.nan)
-    flagged = np.flatnonzero((p_group < FLAG_P) & usable[group_owner])
+    single = 2 * stats.t.sf(np.where(usable, farthest, 0.0), df)
+    p = np.where(usable, -np.expm1(m * np.log1p(-np.minimum(single, 1 - 1e-12))), np.nan)
+    with np.errstate(divide="ignore"):
+        critical = np.asarray(stats.t.isf(-np.expm1(np.log1p(-FLAG_P) / np.maximum(m, 1)) / 2, df))
+    flagged = np.flatnonzero((smallest > critical[group_owner]) & usable[group_owner])
     return Extremes(p=p, of=group_owner[flagged], index=flagged)
 
 

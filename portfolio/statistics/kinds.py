@@ -10,8 +10,8 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from portfolio.statistics.exchangeability import LEAST, Parts, cycle_statistic, equal_lengths, lag_one
-from portfolio.statistics.ragged import Bools, Floats, Ints
+from portfolio.statistics.exchangeability import LEAST, Parts, cycle_statistic, lag_one
+from portfolio.statistics.ragged import Bools, Floats, Ints, equal_lengths
 
 STEP, STEPS, DRIFT, WANDERING, CYCLE, ALTERNATION = (
     "step", "several steps", "drift", "wandering", "cycle", "alternation",

@@ -6,12 +6,17 @@ Everything here is a pure function of arrays. No group is ever visited in a Pyth
 
 from __future__ import annotations
 
+from collections.abc import Iterator
+
 import numpy as np
 from numpy.typing import NDArray
 
 Floats = NDArray[np.float64]
 Ints = NDArray[np.int64]
 Bools = NDArray[np.bool_]
+
+CHUNK = 2_000_000
+"Values worked on at once: keeps a portfolio of any size below some 200 MB."
 
 
 def starts_of(keys: Ints, count: int) -> Ints:
@@ -87,3 +92,15 @@ def padded(values: Floats, start: Ints, width: int | None = None) -> Floats:
 def taken(start: Ints, keep: Bools) -> Ints:
     """New starts after keeping only the elements marked in `keep` (N,)."""
     return np.concatenate(([0], np.cumsum(keep)))[start].astype(np.int64)
+
+
+def equal_lengths(start: Ints) -> Iterator[tuple[int, Ints]]:
+    """Groups of equal length, in pieces of bounded size: (length, row numbers)."""
+    n = np.diff(start)
+    order = np.argsort(n, kind="stable")
+    lengths, first = np.unique(n[order], return_index=True)
+    for length, begin, end in zip(lengths.tolist(), first.tolist(), [*first[1:].tolist(), len(order)], strict=True):
+        rows = order[begin:end]
+        piece = max(1, CHUNK // max(length, 1))
+        for at in range(0, len(rows), piece):
+            yield length, rows[at : at + piece]
