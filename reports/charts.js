@@ -54,7 +54,9 @@
     if (kind === "overview") spec.height = Math.min(340, Math.max(240, Math.floor(place.clientWidth * 0.5)));
     return spec;
   };
+  const ERRORS_ONLY = 1; // an empty data set, such as no change of the level, is nothing to warn about
   const options = {
+    logLevel: ERRORS_ONLY,
     mode: "vega", ast: true, actions: false, defaultStyle: false, renderer: "svg", tooltip: false,
     formatLocale: { decimal, thousands: "\u202f", grouping: [3], currency: ["", ""] },
   };

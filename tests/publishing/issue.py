@@ -10,7 +10,7 @@ from pathlib import Path
 from portfolio.publishing import names, pages
 from tests.publishing.sample import page_data
 
-SIZE = 160
+SIZE = 110
 "Characteristics: more than one page of the list."
 FIXED = (
     "index.html",
