@@ -93,6 +93,20 @@ def test_location_has_one_measured_scale_and_signals_differ_in_shape_size_and_co
         assert len(set(map(str, scales[name]["range"]))) == 2
 
 
+def test_now_and_after_limit_and_aim_are_told_apart_without_colour():
+    for kind in ("centering", "card"):
+        marks = [
+            node for node in walk(charts.templates()[kind]) if isinstance(node, dict) and node.get("type") == "line"
+        ]
+        dashes = [str(mark["encode"]["update"].get("strokeDash")) for mark in marks]
+        assert len(marks) == 2 and dashes[0] != dashes[1]
+        (dash,) = (scale for scale in charts.templates()[kind]["scales"] if scale["name"] == "strokeDash")
+        assert dash["domain"] == ["limit", "aim"] and dash["range"] == [[1, 0], [5, 3]]
+    for name in ("shape", "size"):
+        (scale,) = (scale for scale in charts.templates()["overview"]["scales"] if scale["name"] == name)
+        assert len(set(map(str, scale["range"]))) == 2
+
+
 def test_a_changed_copy_does_not_change_the_template():
     charts.templates()["control"]["data"].clear()
     assert charts.templates()["control"]["data"]
