@@ -168,7 +168,14 @@ class Store:
         except duckdb.Error as error:
             raise _told(self.path, error, during=f"insert into {table}") from error
         finally:
-            self.connection.unregister("rows_to_insert")
+            self._let_go("rows_to_insert")
+
+    def _let_go(self, name: str) -> None:
+        try:
+            self.connection.unregister(name)
+        except duckdb.Error:
+            # Inside a failed transaction nothing can be dropped; the rollback does it, and the first error is told.
+            return
 
     def checkpoint(self) -> None:
         """Fold the log into the file, then note what the store knows."""
