@@ -17,6 +17,7 @@ from zoneinfo import ZoneInfo
 import numpy as np
 import pandas as pd
 
+from portfolio import demo_truth
 from portfolio.demo_processes import SCENARIOS, Process, characteristics
 from portfolio.errors import UsageError
 from portfolio.plan import Plan
@@ -94,7 +95,7 @@ def write(folder: Path, *, ending: date | None = None, seed: int = SEED) -> Demo
     _write_quarry(folder / "incoming/quarry", values[values["site"] == "Quarry"])
     _write_registry(folder / "registry.csv", processes, start)
     _write_changes(folder / "changes.csv", processes, start)
-    _write_truth(folder / "truth", processes, start)
+    demo_truth.write(folder / "truth", processes, start)
     (folder / "plan.toml").write_text(PLAN, encoding="utf-8")
     end = datetime.combine(sunday + timedelta(days=1), time(), ZoneInfo(ZONE))
     return Demo(folder / "plan.toml", end.astimezone(UTC))
@@ -246,22 +247,3 @@ def _write_changes(path: Path, processes: list[Process], start: datetime) -> Non
             f"{process.name},{start + timedelta(days=process.change_day):%Y-%m-%dT%H:%M},re-centred,offset corrected"
         )
     path.write_text("\n".join(lines) + "\n", encoding="utf-8")
-
-
-def _write_truth(folder: Path, processes: list[Process], start: datetime) -> None:
-    """What each process truly is: for tests only."""
-    folder.mkdir(exist_ok=True)
-    rows = [
-        {
-            "characteristic": process.name,
-            "scenario": process.scenario,
-            "mean": process.mean,
-            "sigma": process.sigma,
-            "lsl": process.registered.get("lsl", ""),
-            "usl": process.registered.get("usl", ""),
-            "target": 1.67 if process.registered.get("class") == "critical" else 1.33,
-            "changed": f"{start + timedelta(days=process.change_day):%Y-%m-%d}" if process.change_day else "",
-        }
-        for process in processes
-    ]
-    pd.DataFrame(rows).to_csv(folder / "truth.csv", index=False, lineterminator="\n")

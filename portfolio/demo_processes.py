@@ -64,11 +64,10 @@ def _walk(p: Process, m: int, n: int, rng: np.random.Generator) -> Floats:
 
 
 def _autoregressive(m: int, phi: float, rng: np.random.Generator) -> Floats:
-    from scipy.signal import lfilter
-
     shocks = rng.standard_normal(m) * np.sqrt(1 - phi**2)
     shocks[0] /= np.sqrt(1 - phi**2)
-    return np.asarray(lfilter([1.0], [1.0, -phi], shocks))
+    lag = np.arange(m)[:, None] - np.arange(m)
+    return np.asarray(np.where(lag >= 0, phi ** np.maximum(lag, 0), 0.0) @ shocks)
 
 
 def _cycle(p: Process, m: int, n: int, rng: np.random.Generator) -> Floats:
@@ -97,9 +96,14 @@ def _batches(p: Process, m: int, n: int, rng: np.random.Generator) -> Floats:
     return p.mean + between + p.sigma * np.sqrt(1 - share) * rng.standard_normal((m, n))
 
 
+CAVITIES = 0.84 * np.array([-1.4, 0.1, 0.4, 1.5])
+"Offsets of the four cavities of a tool, in the sigma of their process."
+CAVITY_NOISE = 0.6
+"Spread inside one cavity, in the same sigma."
+
+
 def _cavities(p: Process, m: int, n: int, rng: np.random.Generator) -> Floats:
-    offsets = np.array([-1.4, 0.1, 0.4, 1.5])[:n]
-    return p.mean + p.sigma * 0.6 * (offsets[None, :] * 1.4 + rng.standard_normal((m, n)))
+    return p.mean + p.sigma * (CAVITIES[None, :n] + CAVITY_NOISE * rng.standard_normal((m, n)))
 
 
 def _folded(p: Process, m: int, n: int, rng: np.random.Generator) -> Floats:
@@ -134,6 +138,7 @@ SCENARIOS: dict[str, Scenario] = {
     "isolated extremes": _isolated, "layers": _batches, "cavities": _cavities, "coarse": _noise, "sorted": _sorted,
     "give-away": _noise, "too few": _noise, "no limits": _noise, "new limits": _noise, "unit mix-up": _inches,
     "silent": _noise, "not adjustable": _noise, "no data": _noise, "leaning": _leaning, "re-centred": _recentred,
+    "noisy gauge": _noise,
 }  # fmt: skip
 
 COUNTS = {
@@ -265,6 +270,10 @@ def _special(process: Process, scenario: str, index: int, nominal: float, rng: n
         registered.update(lsl="", usl="")
     if scenario == "no data":
         process.subgroups = 0
+    if scenario == "too wide, centred" and index in (3, 9):
+        # What is wide here is the gauge, not the process.
+        process.scenario = "noisy gauge"
+        registered.update(gauge_sd=f"{0.97 * process.sigma:.3g}", gauge_df=40)
     if scenario == "unit mix-up":
         process.resolution = 0.0001
     if scenario == "not adjustable":
