@@ -227,7 +227,7 @@ def _typed(frame: pd.DataFrame, place: _Places) -> tuple[pd.DataFrame, list[Prob
         given = frame[column]
         numbers = pd.to_numeric(given.map(lambda value: None if _blank(value) else value), errors="coerce")
         out[column] = numbers.astype(np.float64).where(np.isfinite(numbers.astype(np.float64)))
-        for index in given.index[~given.map(_blank) & out[column].isna()]:
+        for index in given.index[~given.map(_blank).astype(bool) & out[column].isna()]:
             problems.append(
                 Problem(place(index, column), f"'{given[index]}' is not a number", "Correct it or leave it empty")
             )
@@ -236,7 +236,7 @@ def _typed(frame: pd.DataFrame, place: _Places) -> tuple[pd.DataFrame, list[Prob
         given.map(lambda value: None if _blank(value) else str(value)), errors="coerce", utc=True, format="ISO8601"
     )
     out["valid_from"] = stamps.dt.tz_localize(None).astype("datetime64[us]")
-    for index in given.index[~given.map(_blank) & out["valid_from"].isna()]:
+    for index in given.index[~given.map(_blank).astype(bool) & out["valid_from"].isna()]:
         problems.append(Problem(place(index, "valid_from"), f"'{given[index]}' is not a date", "Use YYYY-MM-DD"))
     out["row"] = frame.index + place.first_row
     return out, problems
