@@ -13,6 +13,7 @@ import portfolio
 from portfolio import job, registry
 from portfolio.face import Weekly
 from portfolio.plan import Plan
+from tests import open_data_tables
 
 FIXTURES = Path(__file__).parents[1] / "fixtures"
 ROW_161 = pd.Timestamp("2026-03-02 08:00")
@@ -118,12 +119,58 @@ def test_gear_batches_are_too_few_to_judge(nist):
     assert (row["stability"], row["capability_note"]) == ("not judged", "too_few")
 
 
-def test_the_committed_tables_are_what_the_published_files_give():
-    import importlib.util
+def test_two_batches_of_a_designed_experiment_are_two_streams_not_told_apart(nist):
+    """32 runs, four other factors varied on purpose: the spread they make hides the batches from 32 values."""
+    row = nist.loc["ceramic strength"]
+    assert (row["measurements"], row["streams"]) == (32, 2)
+    assert row["stream_p"] > 0.01
 
-    spec = importlib.util.spec_from_file_location("open_data_tables", Path(__file__).with_name("open_data_tables.py"))
-    assert spec is not None and spec.loader is not None
-    tables = importlib.util.module_from_spec(spec)
-    spec.loader.exec_module(tables)
-    made = tables.nist_measurements().to_csv(index=False, lineterminator="\n")
-    assert (FIXTURES / "open_data" / "nist" / "measurements.csv").read_text() == made
+
+def test_two_batches_of_480_specimens_are_told_apart_by_their_published_difference():
+    """Handbook 1.4.2.10: 240 specimens each, means 688.9987 and 611.1559; the time order here is ours."""
+    read = pd.read_csv(FIXTURES / "published" / "nist_ceramic.csv")
+    pair = read.groupby("batch").cumcount()
+    measurements = pd.DataFrame(
+        {
+            "characteristic": "ceramic strength",
+            "taken_at": pd.Timestamp("2026-01-05") + pd.to_timedelta(pair * 10, unit="min"),
+            "value": read["strength"],
+            "subgroup": pair,
+            "stream": read["batch"],
+        }
+    )
+    known = pd.DataFrame({"characteristic": ["ceramic strength"], "lsl": [450.0], "usl": [850.0]})
+    row = portfolio.judge(measurements, known).iloc[0]
+    assert row["streams"] == 2
+    assert row["stream_p"] < 1e-20
+    assert row["streams_means_differ"]
+    assert row["sigma_stream"] == pytest.approx((688.9987 - 611.1559) / 2, rel=0.01)
+
+
+@pytest.mark.parametrize(
+    ("committed", "made"),
+    [
+        ("nist/measurements.csv", open_data_tables.nist_measurements),
+        ("nist/registry.csv", open_data_tables.nist_registry),
+        ("tennessee_eastman/registry.csv", open_data_tables.eastman_registry),
+    ],
+)
+def test_the_committed_tables_are_what_the_published_files_give(committed, made):
+    text = made().to_csv(index=False, lineterminator="\n")
+    assert (FIXTURES / "open_data" / committed).read_text(encoding="utf-8") == text
+
+
+@pytest.mark.parametrize(
+    ("name", "values", "mean"),
+    [
+        ("LITHOGRA.DAT", 450, 2.53228),  # handbook 6.6.1
+        ("ZARR13.DAT", 195, 9.261460),  # handbook 1.4.2.8
+        ("MAVRO.DAT", 50, 2.001856),  # StRD Mavro, certified mean 2.00185600000000
+        ("GEAR.DAT", 100, 0.99764),  # handbook 1.3.5.4
+    ],
+)
+def test_the_committed_files_are_the_published_ones(name, values, mean):
+    table = open_data_tables.numbers(name)
+    column = table if table.ndim == 1 else table[:, 3 if name == "LITHOGRA.DAT" else 0]
+    assert len(column) == values
+    assert column.mean() == pytest.approx(mean, abs=5e-6)

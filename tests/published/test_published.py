@@ -90,6 +90,17 @@ def test_every_case_names_its_source_and_provenance(case):
     assert set(case) >= {"id", "topic", "inputs", "expected", "tolerance", "check"}
 
 
+@pytest.mark.parametrize("case", CASES)
+def test_every_case_names_a_check_that_exists(case):
+    module, _, function = case["check"].partition(".")
+    assert callable(getattr(checks(module), function))
+
+
+def test_no_two_cases_share_a_name():
+    names = [case.values[0]["id"] for case in CASES]
+    assert len(names) == len(set(names))
+
+
 def test_there_are_published_cases_of_every_area():
     areas = {path.stem for path in FIXTURES.glob("*.json")}
     assert {"capability", "constants", "control_limits", "intervals", "proportions", "run_lengths", "variance"} <= areas
