@@ -45,16 +45,21 @@ DEFAULT_PLAN = Path("plan.toml")
 _debug = False
 
 
-@app.callback(invoke_without_command=False)
+def _print_version(wanted: bool) -> None:
+    if wanted:
+        print(f"portfolio {__version__}")
+        raise typer.Exit
+
+
+@app.callback()
 def _options(
     debug: Annotated[bool, typer.Option("--debug", help="Show the traceback of an error.")] = False,
-    version: Annotated[bool, typer.Option("--version", help="Print the version and end.", is_eager=True)] = False,
+    version: Annotated[
+        bool, typer.Option("--version", help="Print the version and end.", is_eager=True, callback=_print_version)
+    ] = False,
 ) -> None:
     global _debug
     _debug = debug
-    if version:
-        print(f"portfolio {__version__}")
-        raise typer.Exit
 
 
 @app.command()
