@@ -132,6 +132,8 @@
       const scroll = document.createElement("div");
       scroll.className = "scroll";
       scroll.tabIndex = 0;
+      scroll.setAttribute("role", "group");
+      scroll.setAttribute("aria-label", heads.join(", "));
       scroll.append(shown);
       details.append(scroll);
     });

@@ -10,7 +10,7 @@ from pathlib import Path
 from urllib.parse import unquote
 
 import pytest
-from playwright.sync_api import Browser, BrowserContext, Page, Playwright, sync_playwright
+from playwright.sync_api import Browser, BrowserContext, Page, Playwright, expect, sync_playwright
 
 from portfolio.publishing import names
 from tests.publishing import issue
@@ -19,6 +19,8 @@ ARGUMENTS = [
     "--no-sandbox", "--disable-gpu", "--disable-background-networking", "--disable-component-update",
     "--disable-default-apps", "--disable-sync", "--no-first-run", "--disable-dev-shm-usage",
 ]  # fmt: skip
+PATIENCE = 20_000
+"Milliseconds until a busy machine is taken for a fault."
 WATCH = """
 window.violations = [];
 const seen = (e) => window.violations.push(e.violatedDirective + " " + e.blockedURI);
@@ -53,6 +55,7 @@ def playwright() -> Iterator[Playwright]:
 
 @pytest.fixture(scope="session")
 def browser(playwright: Playwright, chromium: str) -> Iterator[Browser]:
+    expect.set_options(timeout=PATIENCE)
     running = playwright.chromium.launch(executable_path=chromium, args=ARGUMENTS)
     yield running
     running.close()
@@ -77,7 +80,7 @@ class Site:
     @classmethod
     def open(cls, browser: Browser, root: Path, **options: object) -> Site:
         context = browser.new_context(**options)  # type: ignore[arg-type]
-        context.set_default_timeout(8_000)
+        context.set_default_timeout(PATIENCE)
         context.add_init_script(WATCH)
         site = cls(root, context, context.new_page())
         site.page.on("request", lambda request: site.requests.append(request.url))

@@ -114,7 +114,7 @@ def test_the_rules_for_accessible_pages_are_kept(sites, scheme):
     site = sites(color_scheme=scheme, viewport={"width": 1280, "height": 900})
     only = {"type": "tag", "values": RULES} if scheme == "light" else {"type": "rule", "values": ["color-contrast"]}
     options = json.dumps({"runOnly": only, "preload": False, "resultTypes": ["violations"]})
-    for path in KINDS:
+    for path in KINDS if scheme == "light" else ["index.html", "list.html", "meeting.html", KINDS[-2]]:
         page = site.visit(path, ready=ready(path))
         page.evaluate("document.querySelectorAll('tbody tr:nth-child(n+30)').forEach((row) => row.remove())")
         page.evaluate(AXE)
