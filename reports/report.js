@@ -30,7 +30,8 @@
       const rows = [];
       for (let i = 0; i < data.name.length; i += 1) {
         if (words.every((word) => folded[i].includes(word)) &&
-            ["site", "cell", "route", "class", "owner", "centering"].every((key) => !state[key] || data[key][i] === state[key])) rows.push(i);
+            ["site", "cell", "route", "class", "owner", "centering"].every((key) => !state[key] || data[key][i] === state[key]) &&
+            (!state.alarm || data.alarm[i].split(" ").includes(state.alarm))) rows.push(i);
       }
       const column = data[state.sort] ? state.sort : "rank";
       const down = state.order === "down" ? -1 : 1;
@@ -64,7 +65,7 @@
         held.textContent = data.name[i];
         link.append(held);
         name.append(link);
-        tr.append(cell(data.rank[i] === null ? "" : String(data.rank[i]), "number"), name, cell(data.site[i]), cell(data.cellText[i]),
+        tr.append(cell(data.rank[i] === null ? "" : String(data.rank[i]), "number"), name, cell(data.site[i]), cell(data.cellText[i], "mark " + data.cell[i].replace(/[, ]+/g, "-")),
           cell(data.indexText[i], "number"), cell(data.boundsText[i], "number"), cell(data.afterText[i], "number"),
           cell(data.chanceText[i], "number"), cell(data.route[i]));
         return tr;
@@ -118,26 +119,53 @@
   }
 
   /* Keys. They rest while somebody types, and "?" opens the help where they can be switched off. */
-  const help = document.getElementById("keys");
-  const off = () => { try { return window.localStorage.getItem("portfolio-keys") === "off"; } catch { return false; } };
+  const made = (tag, text, ...inside) => {
+    const node = document.createElement(tag);
+    node.append(text, ...inside);
+    return node;
+  };
+  let offHere = false; // where the browser stores nothing, the choice lasts for the page
+  const off = () => { try { return window.localStorage.getItem("portfolio-keys") === "off"; } catch { return offHere; } };
+  const switched = (on) => {
+    offHere = !on;
+    try { window.localStorage.setItem("portfolio-keys", on ? "on" : "off"); } catch { /* see offHere */ }
+  };
+  const help = (() => {
+    const pairs = made("dl", "");
+    pairs.className = "pairs";
+    for (const [keys, what] of [["/", "search"], ["n", "next characteristic"], ["p", "previous characteristic"], ["u", "up to the list"], ["?", "this help"]]) {
+      pairs.append(made("dt", "", made("kbd", keys)), made("dd", what));
+    }
+    const box = document.createElement("input");
+    box.type = "checkbox";
+    box.checked = !off();
+    box.addEventListener("change", () => switched(box.checked));
+    const close = made("button", "Close");
+    close.type = "button";
+    const title = made("h2", "Keys");
+    title.id = "keys-title";
+    const dialog = made("dialog", "", title, pairs, made("p", "", made("label", "", box, " Single-letter keys are on")), made("p", "", close));
+    dialog.setAttribute("aria-labelledby", title.id);
+    close.addEventListener("click", () => dialog.close());
+    document.body.append(dialog);
+    return dialog;
+  })();
+  const opener = made("button", "Keys");
+  opener.type = "button";
+  opener.id = "open-keys";
+  opener.className = "quiet";
+  opener.addEventListener("click", () => help.showModal());
+  document.querySelector("footer p").append(" ", opener);
   const go = (relation) => { const link = document.querySelector(`a[rel="${relation}"]`); if (link) link.click(); };
   document.addEventListener("keydown", (event) => {
-    if (event.ctrlKey || event.metaKey || event.altKey) return;
+    if (event.ctrlKey || event.metaKey || event.altKey || help.open) return;
     if (/^(INPUT|SELECT|TEXTAREA)$/.test(event.target.tagName)) return;
-    if (event.key === "?" && help) { help.showModal(); event.preventDefault(); return; }
+    if (event.key === "?") { help.showModal(); event.preventDefault(); return; }
     if (off()) return;
     if (event.key === "/") { const box = document.querySelector("input[type=search]"); if (box) { box.focus(); event.preventDefault(); } }
     if (event.key === "n") go("next");
     if (event.key === "p") go("prev");
     if (event.key === "u") go("up");
   });
-  const opener = document.getElementById("open-keys");
-  if (opener && help) {
-    opener.addEventListener("click", () => help.showModal());
-    help.querySelector("button").addEventListener("click", () => help.close());
-    const box = help.querySelector("input");
-    box.checked = !off();
-    box.addEventListener("change", () => { try { window.localStorage.setItem("portfolio-keys", box.checked ? "on" : "off"); } catch { /* private window: the choice lasts for this page */ } });
-  }
   if (!document.querySelector("figure[data-chart]")) document.body.dataset.ready = "yes";
 })();

@@ -77,13 +77,22 @@ class Numbers:
         """A standard deviation with its unit, to about three digits."""
         return self.quantity(sigma, unit, None if missing(sigma) else sigma / 10)
 
+    def step(self, value: Any, unit: Any) -> str:
+        """A recording step with its unit: three significant digits, without zeros at the end."""
+        if missing(value):
+            return "–"
+        text = self.quantity(float(f"{value:.3g}"), unit, value)
+        number, sign, rest = text.partition(self.decimal)
+        digits = rest[: len(rest) - len(rest.lstrip("0123456789"))]
+        return number + (sign + digits.rstrip("0") if digits.rstrip("0") else "") + rest[len(digits) :]
+
     def count(self, value: Any) -> str:
         """A whole number in groups of three."""
         return "–" if missing(value) else f"{round(value):,}".replace(",", THIN)
 
     def counted(self, value: Any, one: str, many: str = "") -> str:
         """A whole number with its noun: '1 value', '3 values'."""
-        return f"{self.count(value)}{SPACE}{one if not missing(value) and value == 1 else many or one + 's'}"
+        return f"{self.count(value)} {one if not missing(value) and value == 1 else many or one + 's'}"
 
     def rough(self, value: Any) -> str:
         """A count that is known only roughly: two significant digits."""
@@ -103,6 +112,14 @@ class Numbers:
     def percent(self, value: Any, digits: int = 0) -> str:
         """A share as a percentage."""
         return "–" if missing(value) else f"{self.fixed(100 * value, digits)}{THIN}%"
+
+    def share(self, value: Any) -> str:
+        """A small share as a percentage that does not round to nothing."""
+        if missing(value) or value == 0:
+            return self.percent(value)
+        if value < 0.0001:
+            return f"under {self.percent(0.0001, 2)}"
+        return self.percent(value, 2 if value < 0.01 else 1 if value < 0.1 else 0)
 
     def chance(self, value: Any) -> str:
         """A probability as whole percent; never 0 or 100."""

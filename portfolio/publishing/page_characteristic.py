@@ -29,20 +29,21 @@ def context(
         location, spread = CHART_WORDS[evidence["chart"]]
         pictures["control"] = _control_caption(row, evidence, location, n)
         beyond = sum(rule == "spread" for rule in evidence["signal_rule"])
-        pictures["spread"] = f"The {spread} of each subgroup with its control limits; {n.count(beyond)} beyond them."
+        told = "not one lies" if not beyond else "1 lies" if beyond == 1 else f"{n.count(beyond)} lie"
+        pictures["spread"] = f"The {spread} of each subgroup with its control limits; {told} beyond them."
     if evidence is not None:
         drawings["histogram"] = records.histogram(row, evidence)
         pictures["histogram"] = _histogram_caption(row, n)
-    if not missing(row["cpk_centered"]):
+    if not missing(row["cpk_centered"]) and row["centering"] != "already there":
         drawings["centering"] = records.centering(row)
         pictures["centering"] = (
             f"Dashed: now, mean {_value(row, 'mean', n)}. Solid: the same spread with the mean at "
             f"{_value(row, 'aim', n)}: Cpk {n.index(row['index'])} becomes {n.index(row['cpk_centered'])}."
         )
-    if history is not None and history["index"].notna().sum() > 1:
+    if history is not None and len(history) > 1:
         drawings["history"] = records.history(history, row["target_cpk"], n.zone)
         pictures["history"] = (
-            f"The judged index of {n.count(int(history['index'].notna().sum()))} judgements with its 95 % bounds; "
+            f"The judged index of {n.count(len(history))} judgements with its 95 % bounds; "
             f"target {n.index(row['target_cpk'])} dashed."
         )
     if drawings:
@@ -53,13 +54,20 @@ def context(
         "verdict": wording.CELL[row["cell"]],
         "cell": row["cell"],
         "step": wording.ROUTE[row["route"]],
-        "action": wording.action(row, n) if row["centering"] in ("reaches", "may reach") else "",
+        "action": wording.action(row, n) if wording.proposed(row) else "",
         "rank": "" if missing(row["rank"]) else int(row["rank"]),
         "facts": _facts(row, n),
         "stability": [s for s in (wording.stability_sentence(row, n), wording.signals_sentence(row, n)) if s],
+        "stability_answer": wording.stability_answer(row, n),
         "capability": wording.capability_sentence(row, n),
+        "capability_answer": wording.capability_answer(row),
         "centering": wording.centering_sentence(row, n),
-        "believe": wording.believe(row, n) if row["centering"] in ("reaches", "may reach") else [],
+        "centering_answer": wording.centering_answer(row, n),
+        "next": wording.next_step(row, n),
+        "route": row["route"],
+        "believe": wording.believe(row, n) if wording.proposed(row) else [],
+        "answers": wording.answers(row, n) if wording.proposed(row) else [],
+        "moved": _moved(row, n) if "centering" in pictures else [],
         "cautions": _cautions(row, n),
         "figures": _figures(row, n),
         "pictures": pictures,
@@ -86,8 +94,26 @@ def neighbours(rows: list[dict[str, Any]]) -> dict[str, dict[str, Any]]:
     return out
 
 
+def _moved(row: dict[str, Any], n: Numbers) -> list[dict[str, str]]:
+    """The numbers of the centering picture: as it is, and with the mean at the aim."""
+    return [
+        {"name": "Mean", "now": _value(row, "mean", n), "after": _value(row, "aim", n)},
+        {"name": "Cpk", "now": n.index(row["index"]), "after": n.index(row["cpk_centered"])},
+        {
+            "name": f"Chance that it reaches {n.index(row['target_cpk'])}",
+            "now": n.chance(row["chance_now"]),
+            "after": n.chance(row["chance_centered"]),
+        },
+        {
+            "name": "Nonconforming parts per million, expected",
+            "now": n.ppm(row["ppm_now"]),
+            "after": n.ppm(row["ppm_centered"]),
+        },
+    ]
+
+
 def _cautions(row: dict[str, Any], n: Numbers) -> list[str]:
-    if row["centering"] in ("reaches", "may reach"):
+    if wording.proposed(row):
         return wording.cautions(row, n)
     return [wording.CAUTION] if row["class"] in wording.SAFETY_CLASSES and row["capability"] == "not capable" else []
 
@@ -101,7 +127,7 @@ def _facts(row: dict[str, Any], n: Numbers) -> list[dict[str, str]]:
         out.append(
             {
                 "label": "Total standard deviation",
-                "value": n.quantity(row["sigma_total"], row["unit"], row["sigma_total"] / 10),
+                "value": n.spread(row["sigma_total"], row["unit"]),
             }
         )
     if not missing(row["index"]):
@@ -113,7 +139,10 @@ def _facts(row: dict[str, Any], n: Numbers) -> list[dict[str, str]]:
         )
         out.append({"label": "Target", "value": n.index(row["target_cpk"])})
     out.append(
-        {"label": "Values judged", "value": f"{n.count(row['measurements'])} in {n.count(row['subgroups'])} subgroups"}
+        {
+            "label": "Judged",
+            "value": f"{n.counted(row['measurements'], 'value')} in {n.counted(row['subgroups'], 'subgroup')}",
+        }
     )
     return out
 
@@ -144,21 +173,19 @@ def _control_caption(row: dict[str, Any], evidence: dict[str, Any], location: st
         {int(i) for i, rule in zip(evidence["signal_index"], evidence["signal_rule"], strict=True) if rule != "spread"}
     )
     change = "" if missing(row["since"]) else f" The dotted line marks {n.date(row['since'])}."
+    told = "No point carries" if not beyond else f"{n.counted(beyond, 'point')} {'carries' if beyond == 1 else 'carry'}"
     return (
-        f"{location} over time with control limits from the process itself. {n.count(beyond)} carry a signal "
-        f"(diamonds).{change}"
+        f"{location} over time. {told} a signal (diamond). The dashed lines are control limits: they come "
+        f"from the process itself, not from the specification.{change}"
     )
 
 
 def _histogram_caption(row: dict[str, Any], n: Numbers) -> str:
-    outside = row["outside_observed"]
+    outside, held = row["outside_observed"], n.counted(row["measurements"], "value")
     if missing(row["lsl"]) and missing(row["usl"]):
-        return f"All {n.count(row['measurements'])} values of the judged stretch; no specification limit is registered."
-    told = (
-        "None of them lies" if not outside else f"{n.count(outside)} of them lie" if outside > 1 else "One of them lies"
-    )
-    values = n.count(row["measurements"])
-    return f"All {values} values of the judged stretch against the specification limits. {told} outside."
+        return f"{held} of the judged stretch; no specification limit is registered."
+    lie = "Not one lies" if not outside else "1 lies" if outside == 1 else f"{n.count(outside)} lie"
+    return f"{held} of the judged stretch against the specification limits. {lie} outside."
 
 
 def _about_data(row: dict[str, Any], n: Numbers) -> list[dict[str, str]]:
@@ -169,7 +196,7 @@ def _about_data(row: dict[str, Any], n: Numbers) -> list[dict[str, str]]:
     if not missing(row["distinct_values"]):
         out.append(("Distinct values", n.count(row["distinct_values"])))
     if not missing(row["recording_step"]):
-        out.append(("Recorded in steps of", n.quantity(row["recording_step"], row["unit"])))
+        out.append(("Recorded in steps of", n.step(row["recording_step"], row["unit"])))
     if not missing(row["streams"]) and row["streams"]:
         out.append(("Streams", n.count(row["streams"])))
     if not missing(row["df_effective"]):

@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections import Counter
 from typing import TYPE_CHECKING, Any
 
-from portfolio.publishing import charts, records, wording
+from portfolio.publishing import charts, page_alarms, records, wording
 from portfolio.publishing.numbers import Numbers, missing
 from portfolio.result import ROUTES
 
@@ -27,16 +27,20 @@ def context(data: PageData, rows: list[dict[str, Any]], n: Numbers) -> dict[str,
     return {
         "headline": _headline(len(first)),
         "lede": _lede(len(rows), len(works), judged, len(listed), n),
-        "alarms": alarms(data, rows, n),
+        "alarms": page_alarms.alarms(data, rows, n),
+        "facts": page_alarms.data_facts(data, rows, n),
         "cards": [card(row, n, f"k{i}-") for i, row in enumerate(first)],
         "cells": {cell: n.count(counts[cell]) for cell in wording.CELL},
+        "short_cells": wording.SHORT_CELL,
+        "bar": _bar([(cell, counts[cell]) for cell in wording.CELL]),
         "routes": [
             {"route": route, "number": n.count(number), "text": wording.ROUTE[route]}
             for route in ROUTES
             if (number := sum(row["route"] == route for row in rows))
         ],
         "listed": n.count(len(listed)),
-        "not_judged": not_judged(rows, n),
+        "expected_short": _expected_short(listed, n),
+        "not_judged": page_alarms.not_judged(rows, n),
         "next": [line(row, n) for row in rest],
         "news": _news(data, rows),
         "target": n.index(target),
@@ -84,11 +88,12 @@ def line(row: dict[str, Any], n: Numbers) -> dict[str, Any]:
         "after": n.index(row["cpk_centered"]),
         "target": n.index(row["target_cpk"]),
         "chance": n.chance(row["chance_centered"]),
-        "tier": "should reach the target" if row["centering"] == "reaches" else "may reach the target",
+        "likely": wording.chance_words(row["chance_centered"]),
         "ppm_now": n.ppm(row["ppm_now"]),
         "ppm_after": n.ppm(row["ppm_centered"]),
         "parts": n.rough(row["parts_per_year"]),
         "money": n.money(row["saving_per_year"], row["currency"]),
+        "saving": _saving(row, n),
     }
 
 
@@ -98,39 +103,31 @@ def place(row: dict[str, Any]) -> str:
     return ", ".join(parts)
 
 
-def alarms(data: PageData, rows: list[dict[str, Any]], n: Numbers) -> list[str]:
-    """What failed or is missing, so that nobody has to look into a log."""
-    out = []
-    for pull in data.pulls.to_dict("records"):
-        if pull["status"] == "failed":
-            out.append(f"Source “{pull['source']}” failed at the last pull: {pull['message']}")
-    if len(data.refused):
-        some = ", ".join(str(item) for item in data.refused["item"].head(3))
-        out.append(f"{n.count(len(data.refused))} files were refused whole: {some}.")
-    silent = sum(row["stability_note"] == "silent" for row in rows)
-    if silent:
-        out.append(f"{n.count(silent)} characteristics have sent nothing for weeks.")
-    suspect = sum(row["capability_note"] == "suspect_limits" for row in rows)
-    if suspect:
-        out.append(
-            f"{n.count(suspect)} characteristics lie wholly outside their limits: a wrong limit or unit is likely."
-        )
-    critical = sum(
-        row["class"] in wording.SAFETY_CLASSES and row["capability"] == "not capable" and row["cell"] != "not judged"
-        for row in rows
-    )
-    if critical:
-        out.append(
-            f"{n.count(critical)} critical characteristics are below their target: contain first; customer and legal "
-            "requirements go before any project."
-        )
+def _saving(row: dict[str, Any], n: Numbers) -> list[str]:
+    """What a move saves in a year, the weightiest first; empty where neither cost nor volume is registered."""
+    out = [] if missing(row["saving_per_year"]) else [n.money(row["saving_per_year"], row["currency"])]
+    if not missing(row["parts_per_year"]):
+        out.append(f"{n.rough(row['parts_per_year'])} parts")
     return out
 
 
-def not_judged(rows: list[dict[str, Any]], n: Numbers) -> list[dict[str, str]]:
-    """Why characteristics were not judged, most frequent first."""
-    why = Counter(row["capability_note"] or row["stability_note"] for row in rows if row["cell"] == "not judged")
-    return [{"number": n.count(count), "why": wording.NOT_JUDGED.get(code, code)} for code, count in why.most_common()]
+def _bar(counts: list[tuple[str, int]]) -> list[dict[str, Any]]:
+    """Parts of a bar 1000 wide, in the order of the cells, with a little air between."""
+    total = sum(number for _, number in counts) or 1
+    out, at = [], 0.0
+    for cell, number in counts:
+        width = 1000 * number / total
+        if number:
+            out.append({"cell": cell, "x": round(at, 1), "width": round(max(1.0, width - 2), 1)})
+        at += width
+    return out
+
+
+def _expected_short(listed: list[dict[str, Any]], n: Numbers) -> str:
+    """How many of the list are expected to fall short: the chances say so themselves."""
+    short = sum(1 - row["chance_centered"] for row in listed)
+    told = "fewer than one" if short < 0.95 else f"about {n.count(short)}"
+    return f"The chances add up: of these {n.count(len(listed))}, {told} will turn out not to reach the target."
 
 
 def _headline(number: int) -> str:

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import Any
 
-from portfolio.publishing import wording
+from portfolio.publishing import page_alarms, wording
 from portfolio.publishing.numbers import Numbers, missing
 
 FILTERS = (
@@ -14,6 +14,7 @@ FILTERS = (
     ("centering", "Centering"),
     ("class", "Class"),
     ("owner", "Owner"),
+    ("alarm", "To look at"),
 )
 
 
@@ -30,7 +31,7 @@ def columns(rows: list[dict[str, Any]], n: Numbers) -> dict[str, list[Any]]:
         "name": words("characteristic"), "page": words("page"), "site": words("site"), "part": words("part"),
         "feature": words("feature"), "unit": words("unit"), "owner": words("owner"), "class": words("class"),
         "cell": words("cell"), "cellText": [wording.CELL[row["cell"]] for row in rows], "route": words("route"),
-        "centering": words("centering"),
+        "centering": words("centering"), "alarm": [" ".join(page_alarms.kinds_of(row)) for row in rows],
         "rank": [None if missing(row["rank"]) else int(row["rank"]) for row in rows],
         "index": figures("index"), "indexLow": figures("index_low"), "indexHigh": figures("index_high"),
         "after": figures("cpk_centered"), "chance": figures("chance_centered"),
@@ -42,17 +43,17 @@ def columns(rows: list[dict[str, Any]], n: Numbers) -> dict[str, list[Any]]:
 
 
 def context(rows: list[dict[str, Any]]) -> dict[str, Any]:
-    """Choices of the filters."""
-    shown = {"cell": wording.CELL}
+    """Choices of the filters: what occurs, in the words of the pages."""
+    shown = {"cell": wording.CELL, "alarm": page_alarms.KINDS}
+    there = {key: {str(row[key]) for row in rows if not missing(row[key])} for key, _ in FILTERS if key != "alarm"} | {
+        "alarm": {kind for row in rows for kind in page_alarms.kinds_of(row)}
+    }
     return {
         "filters": [
             {
                 "key": key,
                 "label": label,
-                "choices": [
-                    {"value": value, "text": shown.get(key, {}).get(value, value)}
-                    for value in sorted({str(row[key]) for row in rows if not missing(row[key])})
-                ],
+                "choices": [{"value": v, "text": shown.get(key, {}).get(v, v)} for v in sorted(there[key])],
             }
             for key, label in FILTERS
         ],

@@ -4,9 +4,9 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING, Any
 
-from portfolio.publishing import charts, records, wording
+from portfolio.publishing import charts, page_alarms, records, wording
 from portfolio.publishing.numbers import Numbers, missing
-from portfolio.publishing.page_first import alarms, proposal
+from portfolio.publishing.page_first import proposal
 
 if TYPE_CHECKING:
     from portfolio.publishing.pages import PageData
@@ -19,13 +19,15 @@ def context(data: PageData, rows: list[dict[str, Any]], n: Numbers) -> dict[str,
     drawn = {row["characteristic"]: row for row in data.evidence.to_dict("records")}
     return {
         "cards": [_sheet(row, drawn.get(row["characteristic"]), n, i) for i, row in enumerate(first)],
-        "alarms": alarms(data, rows, n),
-        "waiting": len(listed) - len(first),
+        "alarms": page_alarms.alarms(data, rows, n),
+        "facts": page_alarms.data_facts(data, rows, n),
+        "waiting": n.counted(len(listed) - len(first), "further characteristic") if len(listed) > len(first) else "",
     }
 
 
 def _sheet(row: dict[str, Any], evidence: dict[str, Any] | None, n: Numbers, i: int) -> dict[str, Any]:
     out = proposal(row, n)
+    out["answers"] = wording.answers(row, n)
     out["stability"] = wording.stability_sentence(row, n)
     out["capability"] = wording.capability_sentence(row, n)
     out["control"] = out["histogram"] = None

@@ -4,12 +4,14 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING, Any
 
-from portfolio.publishing import charts, wording
+from portfolio.publishing import charts, names, page_alarms, wording
 from portfolio.publishing.numbers import Numbers, missing
-from portfolio.publishing.page_first import alarms, not_judged
 from portfolio.result import CELLS, NOT_JUDGED
 
 if TYPE_CHECKING:
+    import pandas as pd
+
+    from portfolio.plan import Plan
     from portfolio.publishing.pages import PageData
 
 GOOD = "stable, capable"
@@ -55,6 +57,7 @@ def sites(compared: dict[str, Any], n: Numbers) -> dict[str, Any]:
                 {
                     "site": member["site"],
                     "name": member["characteristic"],
+                    "page": names.page(member["characteristic"]),
                     "index": "" if missing(member["index"]) else f"{member['index_name']} {n.index(member['index'])}",
                     "bounds": ""
                     if missing(member["index_low"])
@@ -62,18 +65,19 @@ def sites(compared: dict[str, Any], n: Numbers) -> dict[str, Any]:
                     "n": n.count(member["n"]),
                     "verdict": wording.CELL[member["cell"]],
                     "mean": n.quantity(member["mean"], family["unit"], member["sigma_total"]),
-                    "sigma": n.quantity(
-                        member["sigma_total"],
-                        family["unit"],
-                        None if missing(member["sigma_total"]) else member["sigma_total"] / 10,
-                    ),
+                    "sigma": n.spread(member["sigma_total"], family["unit"]),
                 }
                 for member in family["rows"]
             ],
         }
         for family in compared["families"]
     ]
-    return {"sites": rows, "families": families, "picture": picture, "heads": [wording.CELL[cell] for cell in CELLS]}
+    return {
+        "sites": rows,
+        "families": families,
+        "picture": picture,
+        "heads": [wording.SHORT_CELL[cell] for cell in CELLS],
+    }
 
 
 def quality(data: PageData, rows: list[dict[str, Any]], n: Numbers) -> dict[str, Any]:
@@ -93,18 +97,18 @@ def quality(data: PageData, rows: list[dict[str, Any]], n: Numbers) -> dict[str,
                 "new": n.count(row["rows_new"]),
                 "known": n.count(row["rows_known"]),
                 "corrected": n.count(row["rows_corrected"]),
-                "rejected": f"{n.count(row['rows_rejected'])} ({n.percent(share, 2)})",
+                "rejected": f"{n.count(row['rows_rejected'])} ({n.share(share)})",
                 "empty": n.count(row["rows_empty"]),
                 "newest": n.time(row["last_taken"]),
-                "message": pull.get("message") or "",
+                "message": _text(pull.get("message")),
             }
         )
     never = [pull for name, pull in last.items() if name not in set(data.loads["source"])]
     return {
-        "alarms": alarms(data, rows, n),
+        "alarms": page_alarms.alarms(data, rows, n),
         "sources": sources,
         "never": [
-            {"source": pull["source"], "status": pull["status"], "message": pull["message"] or ""} for pull in never
+            {"source": pull["source"], "status": pull["status"], "message": _text(pull["message"])} for pull in never
         ],
         "reasons": [
             {
@@ -122,13 +126,13 @@ def quality(data: PageData, rows: list[dict[str, Any]], n: Numbers) -> dict[str,
         "unregistered": [
             {"name": r["name"], "number": n.count(r["measurements"])} for r in data.unregistered.to_dict("records")
         ],
-        "why": not_judged(rows, n),
+        "why": page_alarms.not_judged(rows, n),
         "unjudged": [
             {
                 "name": row["characteristic"],
                 "page": row["page"],
                 "site": "" if missing(row["site"]) else row["site"],
-                "why": wording.NOT_JUDGED.get(row["capability_note"] or row["stability_note"], ""),
+                "why": wording.NOT_JUDGED[page_alarms.code_of(row)],
                 "held": n.count(row["window_measurements"]),
                 "last": n.date(row["last"]),
             }
@@ -139,8 +143,9 @@ def quality(data: PageData, rows: list[dict[str, Any]], n: Numbers) -> dict[str,
 
 
 def changes(data: PageData, rows: list[dict[str, Any]], n: Numbers) -> dict[str, Any]:
-    """What changes.html lays out: logged changes and what the stretch since then looks like."""
+    """What changes.html lays out: each logged change, the last judgement before it, and the stretch since then."""
     known = {row["characteristic"]: row for row in rows}
+    past = data.history[data.history["characteristic"].isin(data.changes["characteristic"])]
     out = []
     for change in data.changes.to_dict("records"):
         row = known.get(change["characteristic"])
@@ -150,10 +155,41 @@ def changes(data: PageData, rows: list[dict[str, Any]], n: Numbers) -> dict[str,
                 "page": None if row is None else row["page"],
                 "at": n.time(change["changed_at"]),
                 "kind": change["kind"],
-                "note": change["note"] or "",
+                "note": _text(change["note"]),
                 "since": "no longer registered" if row is None else wording.CELL[row["cell"]],
-                "index": "" if row is None or missing(row["index"]) else f"{row['index_name']} {n.index(row['index'])}",
+                "before": _index_before(past, change, n),
+                "index": ""
+                if row is None or missing(row["index"])
+                else f"{row['index_name']} {n.index(row['index'])} ({n.index(row['index_low'])} to "
+                f"{n.index(row['index_high'])})",
                 "held": "" if row is None else n.count(row["measurements"]),
             }
         )
     return {"logged": out}
+
+
+def methods(plan: Plan, n: Numbers) -> dict[str, str]:
+    """The plan's settings that methods.html names."""
+    chosen = plan.judgement
+    shares = ("false_discovery", "practical_size", "list_chance", "should_reach_chance", "keep_chance")
+    return {
+        "weeks": n.count(plan.portfolio.window_weeks),
+        "minimum_values": n.count(chosen.minimum_values),
+        "minimum_subgroups": n.count(chosen.minimum_subgroups),
+        **{name: n.percent(getattr(chosen, name)) for name in shares},
+    }
+
+
+def _index_before(past: pd.DataFrame, change: dict[str, Any], n: Numbers) -> str:
+    """The judged index and its bounds in the last judgement up to the change; '' where there was none."""
+    own = past[(past["characteristic"] == change["characteristic"]) & (past["as_of"] <= change["changed_at"])]
+    own = own[own["index"].notna()]
+    if own.empty:
+        return ""
+    last = own.iloc[-1]
+    return f"{n.index(last['index'])} ({n.index(last['index_low'])} to {n.index(last['index_high'])})"
+
+
+def _text(value: Any) -> str:
+    """A text out of the store; empty where there is none."""
+    return "" if missing(value) else str(value)

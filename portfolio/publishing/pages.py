@@ -95,7 +95,7 @@ def render(
     yield "sites.html", page("sites.html", **page_others.sites(compared, n))
     yield "quality.html", page("quality.html", **page_others.quality(data, rows, n))
     yield "changes.html", page("changes.html", **page_others.changes(data, rows, n))
-    yield "methods.html", page("methods.html", settings=data.plan.judgement, weeks=data.plan.portfolio.window_weeks)
+    yield "methods.html", page("methods.html", **page_others.methods(data.plan, n))
     yield "meeting.html", _meeting(data, rows, n, common)
     yield from _characteristics(data, rows, n, page, progress)
     yield from _data(data)
@@ -106,7 +106,7 @@ def _characteristics(
     progress: Callable[[int, int], None] | None,
 ) -> Iterator[tuple[str, bytes]]:  # fmt: skip
     drawn = {row["characteristic"]: row for row in data.evidence.to_dict("records")}
-    history = dict(tuple(data.history.groupby("characteristic")))
+    history = dict(tuple(data.history[data.history["index"].notna()].groupby("characteristic")))
     neighbours = page_characteristic.neighbours(rows)
     for number, row in enumerate(rows):
         name = row["characteristic"]
@@ -161,6 +161,7 @@ def environment() -> jinja2.Environment:
         lstrip_blocks=True,
     )
     made.filters["rows_json"] = lambda value: Markup(safe_json(value))  # escaped in safe_json
+    made.filters["slug"] = lambda cell: cell.replace(", ", "-").replace(" ", "-")
     return made
 
 

@@ -21,6 +21,7 @@ from portfolio.publishing.wording_codes import (
     REMEDY,
     ROUTE,
     SAFETY_CLASSES,
+    SHORT_CELL,
 )
 from portfolio.publishing.wording_proposal import (
     action,
@@ -46,11 +47,11 @@ if TYPE_CHECKING:
     from portfolio.plan import Plan
 
 __all__ = [
-    "CAUTION", "CELL", "CENTERING_REASON", "LEFT", "NOT_JUDGED", "REMEDY", "ROUTE", "SAFETY_CLASSES", "Explanation",
-    "action", "answers", "believe", "capability_answer", "capability_sentence", "cautions", "centering_answer",
-    "centering_sentence", "chance_words", "explanation", "gain_sentence", "least_sentence", "left_list",
-    "move_sentence", "next_step", "proposed", "reasons", "signals_sentence", "spread_sentence", "stability_answer",
-    "stability_sentence", "where_to_look",
+    "CAUTION", "CELL", "CENTERING_REASON", "LEFT", "NOT_JUDGED", "REMEDY", "ROUTE", "SAFETY_CLASSES", "SHORT_CELL",
+    "Explanation", "action", "answers", "believe", "capability_answer", "capability_sentence", "cautions",
+    "centering_answer", "centering_sentence", "chance_words", "explanation", "gain_sentence", "least_sentence",
+    "left_list", "move_sentence", "next_step", "proposed", "reasons", "signals_sentence", "spread_sentence",
+    "stability_answer", "stability_sentence", "where_to_look",
 ]  # fmt: skip
 
 MOST_MORE = 10.0

@@ -9,6 +9,13 @@ CELL = {
     "unstable, not capable": "not predictable; what was delivered did not fit the tolerance",
     "not judged": "not judged",
 }
+SHORT_CELL = {
+    "stable, capable": "predictable, fits",
+    "stable, not capable": "predictable, does not fit",
+    "unstable, capable": "not predictable, fitted",
+    "unstable, not capable": "not predictable, did not fit",
+    "not judged": "not judged",
+}
 ROUTE = {
     "leave alone": "Leave it alone.",
     "re-centre": "Move the mean.",

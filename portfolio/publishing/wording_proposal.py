@@ -159,8 +159,8 @@ def _sorted(row: Row, n: Numbers) -> str:
     if outside:
         return f"Parts outside the limits are among the data: {n.count(outside)} of {all_values}."
     if _few_expected(row):
-        return f"None of {all_values} lies outside, and none is expected to: the data do not tell. Ask."
-    return f"None of {all_values} lies outside although some are expected: ask whether parts are sorted before."
+        return f"Not one of {all_values} lies outside, and none is expected to: the data do not tell. Ask."
+    return f"Not one of {all_values} lies outside although some are expected: ask whether parts are sorted before."
 
 
 def _gauge(row: Row, n: Numbers) -> str:
@@ -171,7 +171,7 @@ def _gauge(row: Row, n: Numbers) -> str:
     else:
         fine = "small beside" if step <= FINE_STEP * sigma else "coarse beside"
         head = (
-            f"It records in steps of {n.quantity(step, row['unit'])}, {fine} the standard deviation of "
+            f"It records in steps of {n.step(step, row['unit'])}, {fine} the standard deviation of "
             f"{n.spread(sigma, row['unit'])}."
         )
     return f"{head} The gauge's own error is inside that figure, so the process itself can only be better.".strip()
