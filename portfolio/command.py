@@ -9,14 +9,13 @@ from __future__ import annotations
 import json
 import sys
 import traceback
-from datetime import UTC, date, datetime, time
+from datetime import UTC, datetime
 from pathlib import Path
 from typing import TYPE_CHECKING, Annotated, Any
-from zoneinfo import ZoneInfo
 
 import typer
 
-from portfolio import summary
+from portfolio import moments, summary
 from portfolio.errors import DONE, FAILED, NEEDS_A_PERSON, WRONG_USE, PortfolioError, UsageError
 from portfolio.version import __version__
 
@@ -77,7 +76,7 @@ def demo(
     from portfolio import job
     from portfolio.plan import Plan
 
-    written = scenario.write(folder, ending=None if ending is None else _day(ending))
+    written = scenario.write(folder, ending=None if ending is None else moments.day(ending))
     plan = Plan.read(written.plan)
     registry = _registry(plan)
     scenario.log_changes(plan)
@@ -146,7 +145,7 @@ def judge(plan: PlanFile = DEFAULT_PLAN, as_of: AsOf = None) -> None:
     loaded = _plan(plan)
     registry = _registry(loaded)
     with _progress() as progress, progress.stage("judge"):
-        report = job.judge(loaded, registry, as_of=_moment(as_of, loaded), progress=progress)
+        report = job.judge(loaded, registry, as_of=moments.moment(as_of, loaded), progress=progress)
     summary.judged(report)
 
 
@@ -177,7 +176,7 @@ def run(
     from portfolio import job
 
     loaded = _plan(plan)
-    _finish_run(loaded, job, _registry(loaded), as_of=_moment(as_of, loaded), slot=slot)
+    _finish_run(loaded, job, _registry(loaded), as_of=moments.moment(as_of, loaded), slot=slot)
 
 
 @app.command()
@@ -283,7 +282,7 @@ def log(
     known = _registry(loaded).units()
     if characteristic not in known:
         raise UsageError(f"no characteristic {characteristic!r} in the registry.{nearest(characteristic, list(known))}")
-    moment = _moment(at, loaded, whole_day=False) or datetime.now(UTC)
+    moment = moments.moment(at, loaded, whole_day=False) or datetime.now(UTC)
     upkeep.log_change(loaded, characteristic, kind, moment, note, by)
     print(f"recorded: {characteristic}, {kind}, {moment:%Y-%m-%d %H:%M} UTC")
 
@@ -380,26 +379,3 @@ def _finish_run(plan: Plan, job: Any, registry: Registry, *, as_of: datetime | N
     summary.judged(report.judge)
     summary.published(report.publish)
     raise typer.Exit(NEEDS_A_PERSON if report.needs_a_person else DONE)
-
-
-def _moment(text: str | None, plan: Plan, *, whole_day: bool = True) -> datetime | None:
-    """A date or ISO time in the plan's zone; a bare date means the end of that day (its start for a change)."""
-    if text is None:
-        return None
-    zone = ZoneInfo(plan.portfolio.timezone)
-    if len(text) == 10:
-        day = _day(text)
-        start = datetime.combine(day, time(), zone)
-        return start.replace(day=start.day) if not whole_day else datetime.combine(day, time(23, 59, 59), zone)
-    try:
-        moment = datetime.fromisoformat(text)
-    except ValueError:
-        raise UsageError(f"{text!r} is not a time. Use YYYY-MM-DD or YYYY-MM-DDTHH:MM.") from None
-    return moment if moment.tzinfo else moment.replace(tzinfo=zone)
-
-
-def _day(text: str) -> date:
-    try:
-        return date.fromisoformat(text)
-    except ValueError:
-        raise UsageError(f"{text!r} is not a date. Use YYYY-MM-DD.") from None

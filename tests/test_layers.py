@@ -22,6 +22,7 @@ ANYONE_MAY_USE = {
     "shipped",
     "terminal",
     "health",
+    "moments",
     "summary",
 }
 LAYERS = [  # from the top down
