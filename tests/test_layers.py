@@ -35,7 +35,7 @@ LAYERS = [  # from the top down
     {"engine", "store_reader", "intake"},
     {"conclusion"},
     {"judgement"},
-    {"evidence", "sources", "demo_processes"},
+    {"evidence", "sources", "demo_processes", "demo_truth"},
     {"statistics"},
 ]
 
