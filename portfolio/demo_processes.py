@@ -172,7 +172,8 @@ def characteristics(rng: np.random.Generator) -> list[Process]:
             out.append(_one(scenario, index, number, rng))
     out += _families(rng, number)
     for position, process in enumerate(out):
-        process.minute = position % 7
+        # Fillers are weighed together (one row of the wide file); elsewhere each characteristic has its own minute.
+        process.minute = 0 if process.scenario == "give-away" else position % 7
     return out
 
 

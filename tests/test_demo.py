@@ -45,6 +45,8 @@ def test_the_demo_brings_what_a_plant_brings(demo_run):
     assert (harbour.corrected, harbour.rejected, harbour.unregistered, harbour.empty) == (3, 3, 1, 1)
     assert harbour.known > 0
     assert reports["mill moulding"].empty > 0
+    filling = reports["quarry filling"]
+    assert (filling.read, filling.empty) == (6 * 390, 0)
     assert not demo_run.report.needs_a_person
     for source in reports.values():
         assert source.read == source.new + source.known + source.corrected + source.rejected + source.empty
