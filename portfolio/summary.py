@@ -13,11 +13,12 @@ WIDTH = 100
 
 
 def pulled(report: PullReport) -> None:
-    """Source by source: read, new, known, corrected, rejected."""
+    """Source by source; the numbers after the rows read add up to them."""
     for source in report.sources:
         print(
             f"{source.name}: {source.status}; {source.items} items, {source.read} rows read, {source.new} new, "
             f"{source.known} already known, {source.corrected} corrected, {source.rejected} rejected"
+            + (f", {source.empty} without a value" if source.empty else "")
             + (f", {source.unregistered} of unregistered characteristics" if source.unregistered else "")
         )
         for item, reason in source.refused:
