@@ -97,7 +97,13 @@ def test_the_commented_plan_of_new_reads_back_as_the_defaults(tmp_path):
     assert read == bare
     # Every setting of every section is in the text, with its reason where there is one.
     text = (tmp_path / "new" / "plan.toml").read_text()
-    for section in (type(read.portfolio), type(read.judgement), type(read.limits), type(read.report), type(read.schedule)):
+    for section in (
+        type(read.portfolio),
+        type(read.judgement),
+        type(read.limits),
+        type(read.report),
+        type(read.schedule),
+    ):
         assert all(f"{name} =" in text for name in section.model_fields)
     assert "Share of false alarms tolerated" in text
 

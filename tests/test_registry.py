@@ -57,17 +57,30 @@ def test_all_errors_are_raised_together(tmp_path):
 
 
 def test_the_same_registry_from_csv_semicolons_parquet_and_xlsx(tmp_path):
-    rows = pd.DataFrame({"characteristic": ["A", "Größe"], "lsl": [1.5, 2.25], "usl": [2.0, 3.0], "annual_volume": [1000, None]})
+    rows = pd.DataFrame(
+        {"characteristic": ["A", "Größe"], "lsl": [1.5, 2.25], "usl": [2.0, 3.0], "annual_volume": [1000, None]}
+    )
     rows.to_csv(tmp_path / "a.csv", index=False)
     rows.to_csv(tmp_path / "b.csv", index=False, sep=";", decimal=",")
     rows.to_parquet(tmp_path / "c.parquet")
     rows.to_excel(tmp_path / "d.xlsx", index=False)
     plan = Plan(path=tmp_path / "plan.toml")
-    digests = {registry.read_checked(tmp_path / name, plan).sha256() for name in ("a.csv", "b.csv", "c.parquet", "d.xlsx")}
+    digests = {
+        registry.read_checked(tmp_path / name, plan).sha256() for name in ("a.csv", "b.csv", "c.parquet", "d.xlsx")
+    }
     assert len(digests) == 1
 
 
-@pytest.mark.parametrize(("name", "content"), [("r.parquet", b"nothing"), ("r.xlsx", b"nothing"), ("r.csv", "Größe".encode("latin-1")), ("r.csv", b""), ("r.doc", b"x")])
+@pytest.mark.parametrize(
+    ("name", "content"),
+    [
+        ("r.parquet", b"nothing"),
+        ("r.xlsx", b"nothing"),
+        ("r.csv", "Größe".encode("latin-1")),
+        ("r.csv", b""),
+        ("r.doc", b"x"),
+    ],
+)
 def test_a_file_that_is_no_table_is_told(tmp_path, name, content):
     with pytest.raises(RegistryError, match=name):
         read(tmp_path, content, name)

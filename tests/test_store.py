@@ -48,10 +48,9 @@ def test_a_new_store_has_the_newest_schema_and_opening_again_changes_nothing(pat
 
 
 def test_what_fails_in_a_transaction_leaves_no_trace(path):
-    with Store.open(path) as store, pytest.raises(ZeroDivisionError):
-        with store.transaction():
-            store.insert("loads", load(2))
-            raise ZeroDivisionError
+    with Store.open(path) as store, pytest.raises(ZeroDivisionError), store.transaction():
+        store.insert("loads", load(2))
+        raise ZeroDivisionError
     assert loads(path) == 1
 
 
@@ -142,7 +141,9 @@ def test_the_lock_names_its_holder_and_is_free_after_kill(tmp_path):
         "import sys, time; from pathlib import Path; from portfolio.locks import hold\n"
         "with hold(Path(sys.argv[1])): print('held', flush=True); time.sleep(60)"
     )
-    with subprocess.Popen([sys.executable, "-c", script, str(tmp_path / "s")], stdout=subprocess.PIPE, text=True) as other:
+    with subprocess.Popen(
+        [sys.executable, "-c", script, str(tmp_path / "s")], stdout=subprocess.PIPE, text=True
+    ) as other:
         assert other.stdout is not None and other.stdout.readline() == "held\n"
         with pytest.raises(StoreBusyError, match=f"process {other.pid}"), hold(tmp_path / "s"):
             pass

@@ -23,7 +23,9 @@ def plant(folder: Path) -> Path:
         lines = ["characteristic,taken_at,value"]
         for row in range(ROWS):
             minute = number * ROWS + row
-            lines.append(f"C{row % 8},2026-01-{1 + minute // 1440:02d}T{minute // 60 % 24:02d}:{minute % 60:02d}:00,{10 + minute % 7 / 10}")
+            lines.append(
+                f"C{row % 8},2026-01-{1 + minute // 1440:02d}T{minute // 60 % 24:02d}:{minute % 60:02d}:00,{10 + minute % 7 / 10}"
+            )
         (folder / "in" / f"{number:02d}.csv").write_text("\n".join(lines) + "\n")
     names = "\n".join(f"C{i},9,11" for i in range(8))
     (folder / "registry.csv").write_text(f"characteristic,lsl,usl\n{names}\n")

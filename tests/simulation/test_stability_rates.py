@@ -85,7 +85,9 @@ def test_false_discoveries_stay_near_q_with_thirty_percent_disturbed(seed):
     assert called[truth].mean() >= 0.80
 
 
-@pytest.mark.parametrize(("m", "n"), [(20, 5), (37, 1), (37, 5), (60, 1), (60, 5), (240, 1), (240, 5), (1_000, 1), (1_000, 5)])
+@pytest.mark.parametrize(
+    ("m", "n"), [(20, 5), (37, 1), (37, 5), (60, 1), (60, 5), (240, 1), (240, 5), (1_000, 1), (1_000, 5)]
+)
 def test_p_values_are_uniform_under_the_null(m, n):
     """Each part by itself, 600 replicates: Kolmogorov-Smirnov against the uniform, with ties by rounding."""
     rng = np.random.default_rng([m, n])
