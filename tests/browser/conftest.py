@@ -19,6 +19,7 @@ ARGUMENTS = [
     "--no-sandbox", "--disable-gpu", "--disable-background-networking", "--disable-component-update",
     "--disable-default-apps", "--disable-sync", "--no-first-run", "--disable-dev-shm-usage",
 ]  # fmt: skip
+WINDOW = {"width": 1280, "height": 900}
 PATIENCE = 20_000
 "Milliseconds until a busy machine is taken for a fault."
 WATCH = """
@@ -107,21 +108,31 @@ class Site:
         inside = f"file://{self.root}/"
         return [url for url in self.requests if not unquote(url).startswith((inside, "data:"))]
 
-    def finish(self) -> None:
-        try:
-            violations = self.page.evaluate("window.violations || []")
-            assert self.leaks() == []
-            assert self.complaints == []
-            assert violations == []
-        finally:
-            self.context.close()
+    def check(self) -> None:
+        """What every visit must keep to."""
+        violations = self.page.evaluate("window.violations || []")
+        assert self.leaks() == []
+        assert self.complaints == []
+        assert violations == []
+
+
+@pytest.fixture(scope="session")
+def window(browser: Browser, published: Path) -> Iterator[Site]:
+    """One window for many tests: a new one costs more than a page."""
+    opened = Site.open(browser, published, viewport=WINDOW)
+    yield opened
+    opened.context.close()
 
 
 @pytest.fixture
-def site(browser: Browser, published: Path) -> Iterator[Site]:
-    opened = Site.open(browser, published, viewport={"width": 1280, "height": 900})
-    yield opened
-    opened.finish()
+def site(window: Site) -> Iterator[Site]:
+    window.page.goto("about:blank")
+    window.page.set_viewport_size(WINDOW)  # type: ignore[arg-type]
+    window.page.emulate_media()
+    window.requests.clear()
+    window.complaints.clear()
+    yield window
+    window.check()
 
 
 @pytest.fixture
@@ -134,5 +145,9 @@ def sites(browser: Browser, published: Path) -> Iterator[object]:
         return opened[-1]
 
     yield make
-    for one in opened:
-        one.finish()
+    try:
+        for one in opened:
+            one.check()
+    finally:
+        for one in opened:
+            one.context.close()
