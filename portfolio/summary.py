@@ -13,7 +13,7 @@ WIDTH = 100
 
 
 def pulled(report: PullReport) -> None:
-    """Source by source; the numbers after the rows read add up to them."""
+    """Source by source; the numbers add up to the rows read (unregistered ones are among the new)."""
     for source in report.sources:
         print(
             f"{source.name}: {source.status}; {source.items} items, {source.read} rows read, {source.new} new, "

@@ -1,4 +1,4 @@
-"""Seeded inputs for measuring speed and memory: a plant of 400 characteristics as files, and millions of rows in a store."""
+"""Seeded inputs for speed and memory: a plant of 400 characteristics as files, and millions of rows in a store."""
 
 from __future__ import annotations
 
