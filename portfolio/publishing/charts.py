@@ -50,7 +50,9 @@ def template_script() -> str:
     return "window.portfolioTemplates=" + json.dumps(_templates(), separators=(",", ":"), sort_keys=True) + ";\n"
 
 
-def svg(kind: str, data: Mapping[str, DataSet], label: str, prefix: str, decimal: str = ".") -> Markup:
+def svg(
+    kind: str, data: Mapping[str, DataSet], label: str, prefix: str, decimal: str = ".", width: int | None = None
+) -> Markup:
     """A picture drawn now, for pages that need no script.
 
     Parameters
@@ -60,8 +62,11 @@ def svg(kind: str, data: Mapping[str, DataSet], label: str, prefix: str, decimal
     label : what a screen reader says; the caption
     prefix : stands before each id of the picture, so that several fit on one page
     decimal : the plan's decimal sign
+    width : pixels, where the kind's own width would make the lettering too small or too large
     """
     spec = copy.deepcopy(_templates()[kind])
+    if width is not None:
+        spec["width"] = width
     known = {entry["name"]: entry for entry in spec["data"]}
     for name, rows in data.items():
         known[name]["values"] = expanded(rows)

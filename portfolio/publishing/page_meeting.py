@@ -11,6 +11,9 @@ from portfolio.publishing.page_first import proposal
 if TYPE_CHECKING:
     from portfolio.publishing.pages import PageData
 
+HALF = 380
+"Pixels of a picture that takes half the width of a page."
+
 
 def context(data: PageData, rows: list[dict[str, Any]], n: Numbers) -> dict[str, Any]:
     """What meeting.html lays out."""
@@ -45,6 +48,8 @@ def _sheet(row: dict[str, Any], evidence: dict[str, Any] | None, n: Numbers, i: 
             "Values against the specification limits",
             f"h{i}-",
             n.decimal,
+            HALF,
         )
-    out["centering"] = charts.svg("centering", records.centering(row), out["caption"], f"z{i}-", n.decimal)
+    out["picture"] = charts.svg("card", records.centering(row), out["caption"], f"k{i}-", n.decimal)
+    out["centering"] = charts.svg("centering", records.centering(row), out["caption"], f"z{i}-", n.decimal, HALF)
     return out
