@@ -23,7 +23,7 @@ from portfolio.statistics.shape_families import BOUNDED, FAMILIES, NUMBER
 
 SMALLEST = 0.1
 "Index below which its logarithm says nothing: limits on the index itself are taken."
-ROWS = 2000
+ROWS = 200
 "Characteristics whose draws are held at once."
 
 
