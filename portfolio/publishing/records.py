@@ -85,10 +85,11 @@ def marks(row: Row) -> list[dict[str, Any]]:
 
 def history(rows: pd.DataFrame, target: float, zone: str) -> Data:
     """The index of earlier judgements with its bounds."""
-    kept = rows[rows["index"].notna()]
-    index, low, high = (_rounded(kept[name], 4) for name in ("index", "index_low", "index_high"))
+    columns = {name: rows[name].to_numpy() for name in ("as_of", "index", "index_low", "index_high")}
+    judged = np.isfinite(columns["index"].astype(np.float64))
+    index, low, high = (_rounded(columns[name][judged], 4) for name in ("index", "index_low", "index_high"))
     return {
-        "history": _columns(local_milliseconds(kept["as_of"], zone), v=index, l=low, u=high),
+        "history": _columns(local_milliseconds(columns["as_of"][judged], zone), v=index, l=low, u=high),
         "target": [{"v": target}],
     }
 
