@@ -30,6 +30,8 @@ from portfolio.statistics import subgroups as grouping
 from portfolio.statistics.ragged import Bools, Floats, Ints
 
 DAY = 86_400_000_000  # microseconds
+STREAMS_DIFFER_P = 0.01
+"Streams count as different below this p (capability study, section 6)."
 STABILITY_FIELDS = tuple(field.name for field in fields(stability.Evidence) if not field.name.startswith("extreme"))
 
 
@@ -155,7 +157,12 @@ def measure(
     ordered = gauge.sorted_within(stretch.value, stretch.start)
     recorded = gauge.recording(ordered, stretch.start, registry["resolution"].to_numpy(dtype=np.float64))
     rows["distinct_values"], rows["recording_step"] = recorded.distinct, recorded.step
-    shape = normality.normality(ordered, stretch.start, recorded.step)
+    differ = parts.stream_p < STREAMS_DIFFER_P
+    alike = ordered
+    if differ.any():
+        moved = normality.without_stream_means(stretch.value, stretch.start, stretch.stream, differ)
+        alike = gauge.sorted_within(moved, stretch.start)
+    shape = normality.normality(alike, stretch.start, recorded.step)
     rows["normal_a2"], rows["normal_refused"], rows["normal_cautious"] = shape.a2, shape.refused, shape.cautious
     outside = ragged.sums(
         (stretch.value < np.repeat(lower, np.diff(stretch.start)))

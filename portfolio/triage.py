@@ -12,13 +12,12 @@ from dataclasses import dataclass
 import numpy as np
 import pandas as pd
 
+from portfolio.judgement import STREAMS_DIFFER_P
 from portfolio.plan import Judgement
 from portfolio.result import CAPABLE, NOT_CAPABLE, NOT_JUDGED, STABLE, UNSTABLE
 
-STREAMS_P = 0.01
-"Streams count as different below this p (capability study, section 6)."
 STREAMS_SHARE = 0.10
-"... and when their differences make up at least this share of the total variance."
+"Streams that differ matter when their differences make up at least this share of the total variance."
 GAUGE_SHARE = 0.5
 "Gauge variance as a share of the observed variance from which a better gauge is the first step."
 LEAST_PPM = 10.0
@@ -69,7 +68,7 @@ def _answer_centering(out: pd.DataFrame, registry: pd.DataFrame, settings: Judge
     total = out["sigma_total"].to_numpy() ** 2
     with np.errstate(invalid="ignore", divide="ignore"):
         share = np.nan_to_num(out["sigma_stream"].to_numpy() ** 2 / total)
-    out["streams_means_differ"] = (out["stream_p"].to_numpy() < STREAMS_P) & (share >= STREAMS_SHARE)
+    out["streams_means_differ"] = (out["stream_p"].to_numpy() < STREAMS_DIFFER_P) & (share >= STREAMS_SHARE)
     two = registry["lsl"].notna().to_numpy() & registry["usl"].notna().to_numpy()
     lower_ideal = registry["lower_bound"].notna().to_numpy() & registry["lsl"].isna().to_numpy()
     upper_ideal = registry["upper_bound"].notna().to_numpy() & registry["usl"].isna().to_numpy()

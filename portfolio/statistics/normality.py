@@ -64,6 +64,25 @@ def normality(ordered: Floats, start: Ints, step: Floats) -> Normality:
     return Normality(adjusted, refused, refused & (excess < 0) & (np.abs(skew) < LIGHT_SKEW))
 
 
+def without_stream_means(values: Floats, start: Ints, stream: Ints, differ: Bools) -> Floats:
+    """Values (N,) with the means of the streams made equal in the characteristics marked in `differ` (K,).
+
+    Streams that aim at different places are no strange shape of one process: the shape is looked for inside them.
+    """
+    out = values.copy()
+    owner = ragged.owners(start)
+    chosen = np.flatnonzero(differ[owner] & (stream >= 0))
+    if not len(chosen):
+        return out
+    order = chosen[np.lexsort((stream[chosen], owner[chosen]))]
+    fresh = np.ones(len(order), dtype=bool)
+    fresh[1:] = (stream[order][1:] != stream[order][:-1]) | (owner[order][1:] != owner[order][:-1])
+    groups = np.concatenate((np.flatnonzero(fresh), [len(order)])).astype(np.int64)
+    means = ragged.means(values[order], groups)
+    out[order] += ragged.means(values, start)[owner[order]] - np.repeat(means, np.diff(groups))
+    return out
+
+
 def _thinned(values: Floats, start: Ints) -> tuple[Floats, Ints]:
     """At most MOST order statistics of each characteristic, evenly spaced in rank, and their starts."""
     n = np.diff(start)
