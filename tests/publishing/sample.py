@@ -251,7 +251,8 @@ def _capability(recipe: dict[str, Any], row: dict[str, Any]) -> dict[str, Any]:
                            "cell": "not judged", "index_name": "", "shape": ""}  # fmt: skip
     values_there = row["measurements"] > 0 and not (row["lsl"] is None and row["usl"] is None)
     if values_there:
-        out |= {"outside_observed": 3 if code == "suspect_limits" else 0, "outside_high": 0.02}
+        wholly = code == "suspect_limits"
+        out |= {"outside_observed": row["measurements"] if wholly else 0, "outside_high": 1.0 if wholly else 0.02}
     if code:
         return out
     mean, sigma, target = row["mean"], row["sigma_total"], row["target_cpk"]

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import csv
+import dataclasses
 import io
 import json
 import posixpath
@@ -213,3 +214,36 @@ def test_hostile_text_around_the_judgement_is_only_text():
     for path in ("quality.html", "changes.html", "index.html", "sites.html"):
         assert SCRIPT not in issue.files()[path].decode()
         assert any(SCRIPT in part for part in issue.read(path).visible)
+
+
+def part(names: list[str], **frames) -> dict[str, bytes]:
+    """The issue of a few characteristics of the sample, with some of the other tables replaced."""
+    kept = {name: getattr(DATA, name) for name in ("results", "evidence", "history", "ranking")}
+    kept = {name: frame[frame["characteristic"].isin(names)] for name, frame in kept.items()}
+    return dict(pages.render(dataclasses.replace(DATA, **{**kept, **frames})))
+
+
+@pytest.mark.parametrize(
+    "names",
+    [
+        pytest.param(["S01 fits", "N01 no data", "U0 step"], id="no candidate"),
+        pytest.param(["N01 no data"], id="one characteristic without a value"),
+        pytest.param(["R5 tiny values"], id="one candidate"),
+        pytest.param(["S11 upper limit only", "N06 constant", "N07 no limits"], id="nothing with two limits"),
+    ],
+)
+def test_an_issue_with_little_to_say_is_complete_and_honest(names):
+    nothing = {name: getattr(DATA, name).iloc[:0] for name in ("pulls", "loads", "refused", "rejected", "unregistered", "changes")}  # fmt: skip
+    made = part(names, **nothing)
+    for path, content in made.items():
+        if path.endswith(".html"):
+            page = issue.Page(content.decode())
+            shown = " ".join(" ".join(page.visible).split())
+            assert not re.search(r"\b(?:nan|NaN|NaT|inf)\b", shown), path
+            for a in page.all("a"):
+                led = posixpath.normpath(posixpath.join(posixpath.dirname(path), urlsplit(a["href"]).path or path))
+                assert urlsplit(a["href"]).path == "" or led in made, (path, a["href"])
+    listed = int(DATA.results[DATA.results["characteristic"].isin(names)]["rank"].notna().sum())
+    first = issue.Page(made["index.html"].decode())
+    assert len(first.all("article")) == listed
+    assert len([path for path in made if path.startswith("c/")]) == len(names)
