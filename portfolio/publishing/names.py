@@ -12,10 +12,14 @@ TRICKS = re.compile("[\u200e\u200f\u061c\u202a-\u202e\u2066-\u2069]")
 
 
 def page(characteristic: str) -> str:
-    """File name of a characteristic's page: readable, at most 51 characters, unique by a hash of the whole name."""
+    """File name of a characteristic's page: readable, at most 51 characters, unique by a hash of the whole name.
+
+    Thousands of names without one Latin letter or digit would share the readable part, so their hash is longer.
+    """
     plain = unicodedata.normalize("NFKD", characteristic).encode("ascii", "ignore").decode().lower()
-    slug = re.sub(r"[^a-z0-9]+", "-", plain).strip("-")[:LONGEST].strip("-") or "c"
-    return f"{slug}-{hashlib.sha256(characteristic.encode()).hexdigest()[:6]}.html"
+    slug = re.sub(r"[^a-z0-9]+", "-", plain).strip("-")[:LONGEST].strip("-")
+    digest = hashlib.sha256(characteristic.encode()).hexdigest()
+    return f"{slug}-{digest[:6]}.html" if slug else f"c-{digest[:16]}.html"
 
 
 def plain(text: str) -> str:

@@ -14,6 +14,9 @@ SPACE = "\u00a0"  # before a unit
 MINUS = "\u2212"
 SUPERSCRIPT = str.maketrans("-0123456789", "⁻⁰¹²³⁴⁵⁶⁷⁸⁹")
 
+MOST_DECIMALS = 12
+"Beyond these a double holds no more digits of a number of everyday size."
+
 
 def missing(value: Any) -> bool:
     """Whether a cell is empty (None, NaN, NaT, NA or an empty text)."""
@@ -57,15 +60,15 @@ class Numbers:
         if size and (tiny or (size >= 1e7 and size / ground < 1e4)):
             text = self._power(value, digits)
         else:
-            text = self.fixed(value, 0 if tiny else min(8, max(0, digits)))
+            text = self.fixed(value, 0 if tiny else min(MOST_DECIMALS, max(0, digits)))
         return f"+{text}" if sign and value > 0 else text
 
     def _power(self, value: float, digits: int) -> str:
         """Mantissa and power of ten; `digits` are the decimals (may be negative) of the plain number."""
         exponent = math.floor(math.log10(abs(value)))
-        decimals = min(8, max(2, digits + exponent))
-        if abs(round(value / 10.0**exponent, decimals)) >= 10:
+        if abs(round(value / 10.0**exponent, max(2, digits + exponent))) >= 10:
             exponent += 1
+        decimals = min(8, max(2, digits + exponent))
         return f"{self.fixed(value / 10.0**exponent, decimals)}{THIN}·{THIN}10{str(exponent).translate(SUPERSCRIPT)}"
 
     def quantity(self, value: Any, unit: Any, scale: Any = None, *, sign: bool = False) -> str:
@@ -81,7 +84,7 @@ class Numbers:
         """A recording step with its unit: three significant digits, without zeros at the end."""
         if missing(value):
             return "–"
-        text = self.quantity(float(f"{value:.3g}"), unit, value)
+        text = self.quantity(float(f"{value:.3g}"), unit, value / 10)
         number, sign, rest = text.partition(self.decimal)
         digits = rest[: len(rest) - len(rest.lstrip("0123456789"))]
         return number + (sign + digits.rstrip("0") if digits.rstrip("0") else "") + rest[len(digits) :]

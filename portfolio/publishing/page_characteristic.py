@@ -53,7 +53,7 @@ def context(
         "where": place(row),
         "verdict": wording.CELL[row["cell"]],
         "cell": row["cell"],
-        "step": wording.ROUTE[row["route"]],
+        "step": wording.step_sentence(row),
         "action": wording.action(row, n) if wording.proposed(row) else "",
         "rank": "" if missing(row["rank"]) else int(row["rank"]),
         "facts": _facts(row, n),

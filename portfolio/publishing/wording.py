@@ -51,11 +51,19 @@ __all__ = [
     "Explanation", "action", "answers", "believe", "capability_answer", "capability_sentence", "cautions",
     "centering_answer", "centering_sentence", "chance_words", "explanation", "gain_sentence", "least_sentence",
     "left_list", "move_sentence", "next_step", "proposed", "reasons", "signals_sentence", "spread_sentence",
-    "stability_answer", "stability_sentence", "where_to_look",
+    "stability_answer", "stability_sentence", "step_sentence", "where_to_look",
 ]  # fmt: skip
 
 MOST_MORE = 10.0
 "Beyond so many times the present number of values, more values are no way to settle a close call."
+
+LEAST_SHARE = 0.02
+"A smaller part of the variance is not worth a word."
+LOOK = {
+    "within subgroups": ": look at machine, fixture, material and gauge rather than at what changes over time",
+    "between subgroups": ": look at what changes over time, such as set-up, batch, temperature and wear",
+    "between streams": ": look at what differs from stream to stream",
+}
 
 
 @dataclass(frozen=True)
@@ -69,7 +77,8 @@ class Explanation:
 def capability_sentence(row: Row, n: Numbers = PLAIN) -> str:
     """Does it fit the tolerance? Never mentions a control limit."""
     if row["capability"] == "not judged":
-        text = f"Not judged: {NOT_JUDGED[row['capability_note']]}."
+        same = row["stability"] == "not judged" and row["stability_note"] == row["capability_note"]
+        text = "Not judged, for the same reason." if same else f"Not judged: {NOT_JUDGED[row['capability_note']]}."
         if not missing(row["outside_observed"]) and row["measurements"] and row["capability_note"] != "no_limits":
             text += (
                 f" Outside the limits: {n.count(row['outside_observed'])} of "
@@ -164,7 +173,16 @@ def spread_sentence(row: Row, n: Numbers = PLAIN) -> str:
     if len(parts) > 1:
         listed = ", ".join(f"{n.percent(share)} {name}" for name, share in parts)
         told.append(f"Where the variance comes from: {listed}. Start with the largest.")
+    elif parts:
+        told.append(f"Nearly all of the variance is {parts[0][0]}{LOOK[parts[0][0]]}.")
     return " ".join(text for text in told if text)
+
+
+def step_sentence(row: Row) -> str:
+    """The one next step in short."""
+    if row["centering_reason"] == "not_adjustable" and row["route"] == "re-centre":
+        return "Correct the mean at the next tool change."
+    return ROUTE[row["route"]]
 
 
 def next_step(row: Row, n: Numbers = PLAIN) -> list[str]:
@@ -173,7 +191,7 @@ def next_step(row: Row, n: Numbers = PLAIN) -> list[str]:
         return [ROUTE[row["route"]], REMEDY[row["capability_note"] or row["stability_note"]]]
     if proposed(row):
         return [move_sentence(row, n), "Then record the change with “portfolio log”, so that it is followed up."]
-    return [text for text in (ROUTE[row["route"]], where_to_look(row, n), spread_sentence(row, n)) if text]
+    return [text for text in (step_sentence(row), where_to_look(row, n), spread_sentence(row, n)) if text]
 
 
 def reasons(row: Row, n: Numbers = PLAIN) -> list[str]:
@@ -185,7 +203,7 @@ def explanation(row: Row, plan: Plan) -> Explanation:
     """Everything about one characteristic, told as questions."""
     n = Numbers(plan.report.decimal, plan.portfolio.timezone)
     paragraphs = [
-        (f"{row['characteristic']}: {CELL[row['cell']]}", [f"Next step: {ROUTE[row['route']]}", *_place(row)]),
+        (f"{row['characteristic']}: {CELL[row['cell']]}", [f"Next step: {step_sentence(row)}", *_place(row)]),
         ("Is it predictable?", [s for s in (stability_sentence(row, n), signals_sentence(row, n)) if s]),
         ("Does it fit the tolerance?", [capability_sentence(row, n), *_definition(row, n)]),
         ("What would centering do?", [centering_sentence(row, n)]),
@@ -222,13 +240,13 @@ def _needed(row: Row, n: Numbers) -> str:
     if row["route"] != "narrow the spread" or missing(needed) or not needed < sigma:
         return ""
     return (
-        f" The standard deviation would have to fall by {n.percent(1 - needed / sigma)}, from "
+        f" The standard deviation would have to fall by at least {n.percent(1 - needed / sigma)}, from "
         f"{n.spread(sigma, row['unit'])} to about {n.spread(needed, row['unit'])}."
     )
 
 
 def _parts_of_variance(row: Row) -> list[tuple[str, float]]:
-    """Shares of the total variance, largest first; only what could be told apart."""
+    """Shares of the total variance that count, largest first; empty where they could not be told apart."""
     total = row["sigma_total"] ** 2
     if not total > 0:
         return []
@@ -240,7 +258,7 @@ def _parts_of_variance(row: Row) -> list[tuple[str, float]]:
     if not shares:
         return []
     shares.append(("within subgroups", max(0.0, 1 - sum(share for _, share in shares))))
-    return sorted(shares, key=lambda part: -part[1])
+    return sorted((part for part in shares if part[1] >= LEAST_SHARE), key=lambda part: -part[1])
 
 
 def _place(row: Row) -> list[str]:

@@ -51,7 +51,7 @@ REMEDY = {
     "outside_bound": "Look at the values beyond the bound, or correct the bound in the registry.",
     "gauge_too_noisy": "Improve the gauge before anything is said about the process.",
     "no_shape": "Look at the histogram: mixed streams, sorted parts, or a feature whose values are skewed by nature?",
-    "suspect_limits": "Compare limits and unit in the registry with the drawing.",
+    "suspect_limits": "Compare the specification limits and the unit in the registry with the drawing.",
     "sorted": "Ask whether parts are sorted before they are recorded, and judge the values from before the sorting.",
 }
 "What to do about it, beside each code of `NOT_JUDGED`."

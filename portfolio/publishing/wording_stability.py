@@ -72,10 +72,11 @@ def signals_sentence(row: Row, n: Numbers = PLAIN) -> str:
     """The chart's signals beside what a stable process of that length shows anyway."""
     if row["stability"] == "not judged" or missing(row["signals"]) or missing(row["expected_signals"]):
         return ""
-    carry = "carries" if row["signals"] == 1 else "carry"
+    carry = "carries" if row["signals"] <= 1 else "carry"
+    number = n.counted(row["signals"], "subgroup") if row["signals"] else "No subgroup"
     about = n.fixed(row["expected_signals"], 0 if row["expected_signals"] >= 3 else 1)
     return (
-        f"{n.counted(row['signals'], 'subgroup')} {carry} a signal of the control chart; a stable process of this "
+        f"{number} {carry} a signal of the control chart; a stable process of this "
         f"length shows about {about}. Signals alone are not the verdict."
     )
 

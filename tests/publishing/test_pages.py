@@ -8,6 +8,7 @@ from html import unescape
 import pandas as pd
 import pytest
 
+from portfolio.publishing import names as page_names
 from portfolio.publishing import (
     page_alarms,
     page_characteristic,
@@ -17,7 +18,6 @@ from portfolio.publishing import (
     page_others,
     pages,
 )
-from portfolio.publishing import names as page_names
 from portfolio.publishing.numbers import Numbers
 from portfolio.store import Store
 from tests.publishing import issue
@@ -263,7 +263,7 @@ def test_the_data_page_accounts_for_every_row():
 
 
 def test_a_logged_change_stands_between_the_index_before_and_after():
-    name = RESULTS["characteristic"][0]
+    name = next(name for name in DATA.changes["characteristic"] if name != "long gone")
     past = DATA.history[DATA.history["characteristic"] == name].sort_values("as_of")
     when = past["as_of"].iloc[2]
     changes = DATA.changes.assign(changed_at=when)
@@ -330,7 +330,22 @@ def test_every_page_names_control_and_specification_limits_in_full():
         assert not re.search(r"\b(upper|lower) (control|specification) line|\bspec\b|\bUCL\b|\bLCL\b", text), path
 
 
-def test_what_is_collected_out_of_a_store_renders_to_the_same_bytes_again(tmp_path):
-    """A report can be rendered again from the store, byte for byte."""
-    with Store.create(tmp_path / "weekly.duckdb") as store:
-        assert store
+def test_an_issue_rendered_again_from_the_store_is_the_same_byte_for_byte(tmp_path):
+    path = tmp_path / "weekly.duckdb"
+    run = int(DATA.run["run_id"])
+    with Store.open(path) as store:
+        store.insert("runs", pd.DataFrame([DATA.run]).convert_dtypes())
+        store.insert("results", DATA.results.assign(run_id=run))
+        store.insert("evidence", DATA.evidence.assign(run_id=run))
+        store.insert("ranking", DATA.ranking.assign(run_id=run))
+        store.insert("pulls", DATA.pulls.assign(pull_id=1))
+        store.insert("changes", DATA.changes)
+    issues = []
+    for _ in range(2):
+        with Store.open(path, read_only=True) as store:
+            issues.append(dict(pages.render(pages.collect(store, run, DATA.plan))))
+    assert issues[0] == issues[1]
+    direct = dict(pages.render(DATA))
+    same = [name for name in issues[0] if name.startswith(("assets/", "plain", "list", "meth", "data/judgement"))]
+    assert len(same) >= 9
+    assert [name for name in same if issues[0][name] != direct[name]] == []
