@@ -4,7 +4,8 @@ from __future__ import annotations
 
 import os
 import shutil
-from collections.abc import Iterator
+import subprocess
+from collections.abc import Callable, Iterator
 from dataclasses import dataclass, field
 from pathlib import Path
 from urllib.parse import unquote
@@ -46,6 +47,21 @@ def chromium() -> str:
     if os.environ.get("PORTFOLIO_REQUIRE_BROWSER") == "1":
         pytest.fail("PORTFOLIO_REQUIRE_BROWSER is 1 and there is no Chromium; name one in PORTFOLIO_CHROMIUM")
     pytest.skip("no Chromium; name one in PORTFOLIO_CHROMIUM")
+
+
+@pytest.fixture(scope="session")
+def pages_of() -> Callable[[bytes], list[str]]:
+    """The text of each page of a PDF, by poppler's pdftotext."""
+    program = shutil.which("pdftotext")
+    if program is None:
+        missing = pytest.fail if os.environ.get("PORTFOLIO_REQUIRE_BROWSER") == "1" else pytest.skip
+        missing("no pdftotext (package poppler-utils)")
+
+    def read(printed: bytes) -> list[str]:
+        told = subprocess.run([program, "-layout", "-", "-"], input=printed, capture_output=True, check=True)
+        return told.stdout.decode().rstrip("\f").split("\f")
+
+    return read
 
 
 @pytest.fixture(scope="session")

@@ -153,11 +153,18 @@ def test_without_script_the_decision_and_every_number_can_be_read(sites):
 
 @pytest.mark.parametrize("paper", ["A4", "Letter"])
 @pytest.mark.parametrize("scheme", ["light", "dark"])
-def test_the_meeting_sheet_prints_one_page_of_decisions_and_one_for_each_proposal(sites, paper, scheme):
+def test_the_meeting_sheet_prints_one_page_of_decisions_and_one_for_each_proposal(sites, pages_of, paper, scheme):
     site = sites(color_scheme=scheme)
     page = site.visit("meeting.html", ready=False)
-    printed = page.pdf(format=paper, margin=dict.fromkeys(("top", "bottom", "left", "right"), "12mm"))
-    assert len(re.findall(rb"/Type\s*/Page\b", printed)) == 4
+    printed = pages_of(page.pdf(format=paper, margin=dict.fromkeys(("top", "bottom", "left", "right"), "12mm")))
+    assert len(printed) == 4
+    for rank in (1, 2, 3):
+        row = RESULTS[RESULTS["rank"] == rank].iloc[0]
+        for text in (printed[0], printed[rank]):
+            assert row["characteristic"][:20] in " ".join(text.split())
+        assert f"{row['cpk_centered']:.2f}" in printed[0]
+        assert "Is it predictable?" in printed[rank] and "upper limit" in printed[rank]
+    assert printed[0].count("Owner") == 3 and printed[0].count("Until") == 3
 
 
 @pytest.mark.parametrize("path", ["index.html", f"c/{page_names.page('S01 fits')}"])
