@@ -217,8 +217,10 @@ def _ridge(u: Floats, sample: Sample) -> Floats:
     at_high = _folded_score(u, sample, high)
     r, last = np.where(inside, high, 0.0), np.zeros(len(low))
     for _ in range(STEPS):
-        trial = np.where(inside, high - at_high * (high - low) / np.where(inside, at_high - at_low, 1.0), 0.0)
-        trial = np.where(inside, np.clip(trial, low, high), 0.0)
+        gap = at_high - at_low
+        inside &= gap != 0  # both ends on the root already
+        trial = np.where(inside, high - at_high * (high - low) / np.where(inside, gap, 1.0), r)
+        trial = np.where(inside, np.clip(trial, low, high), r)
         done = ~inside | (np.abs(trial - r) <= 1e-8)
         r = trial
         if done.all():

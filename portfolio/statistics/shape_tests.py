@@ -18,10 +18,12 @@ TINY = 1e-300
 PLAIN = 0.752
 "Normal and lognormal, of A2 (1 + 0.75/n + 2.25/n^2): D'Agostino & Stephens (1986), from memory."
 FIXED = {"weibull": 0.757, "half-normal": 1.48, "rayleigh": 1.30}
-FOLDED = ((0.0, 0.5, 2.0), (1.48, 1.15, 0.73))
+FOLDED = ((0.0, 0.5, 1.0, 1.5, 2.0), (1.48, 1.15, 0.81, 0.72, 0.73))
 "Folded normal by mean / sigma."
-GAMMA = ((1.0, 1.5, 4.0), (0.786, 0.78, 0.752))
-STUDENT = 0.752
+GAMMA = ((0.5, 1.0, 2.0, 4.0), (0.815, 0.78, 0.765, 0.755))
+"By shape."
+STUDENT = ((0.0, 0.25, 0.33, 0.4, 0.5), (0.61, 0.61, 0.65, 0.69, 0.75))
+"Student t by inverse degrees of freedom; simulated for this project, checked in tests/simulation."
 
 
 def anderson_darling(family: str, parameters: Floats, sample: Sample, step: Floats) -> Floats:
@@ -65,7 +67,7 @@ def critical(family: str, parameters: Floats, n: Ints) -> Floats:
     if family == "gamma":
         return np.interp(parameters[:, 0], *GAMMA)
     if family == "student t":
-        return np.full(len(n), STUDENT)
+        return np.interp(1 / parameters[:, 2], *STUDENT)
     return np.full(len(n), FIXED[family])
 
 
