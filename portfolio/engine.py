@@ -1,4 +1,4 @@
-"""Where shards run: here, one after the other, with bounded memory. The result does not depend on the cutting.
+"""Where shards run: here, a few at a time in threads, with bounded memory. The result does not depend on the cutting.
 
 A shard is a set of characteristics whose values fit in memory together; each is read with one query in chart order.
 """
@@ -6,6 +6,7 @@ A shard is a set of characteristics whose values fit in memory together; each is
 from __future__ import annotations
 
 from collections.abc import Callable, Iterator
+from concurrent.futures import ThreadPoolExecutor
 from typing import Protocol
 
 import numpy as np
@@ -44,6 +45,8 @@ def judge(
     stretch_from: Ints,
     settings: Judgement,
     progress: Progress | None = None,
+    *,
+    workers: int = 1,
 ) -> Measured:
     """Both passes over the whole portfolio: concluded rows in the registry's order, and the evidence.
 
@@ -52,10 +55,14 @@ def judge(
     """
     shards = list(_shards(reader.counts()))
     measured = []
-    for done, rows in enumerate(shards):
-        measured.append(_shard(reader, registry, window, stretch_from, settings, rows))
-        if progress is not None:
-            progress(done + 1, len(shards))
+    # Threads suffice: sorting, logarithms and sums of long arrays work outside the interpreter's lock. The results
+    # come back in the order of the shards, so their number and speed change nothing.
+    with ThreadPoolExecutor(workers) as pool:
+        finished = pool.map(lambda rows: _shard(reader, registry, window, stretch_from, settings, rows), shards)
+        for done, one in enumerate(finished):
+            measured.append(one)
+            if progress is not None:
+                progress(done + 1, len(shards))
     order = np.concatenate(shards) if shards else np.empty(0, dtype=np.int64)
     back = np.argsort(order, kind="stable")
     first = pd.concat([m.rows for m in measured], ignore_index=True).iloc[back].reset_index(drop=True)

@@ -111,7 +111,9 @@ def judge(
         window = Window(_micros(since), _micros(until))
         reader = StoreReader(store, rows["characteristic"], since, until)
         stretch = _stretches(store, rows, until, window)
-        measured = engine.judge(reader, rows, window, stretch, plan.judgement, progress=_counted(progress))
+        measured = engine.judge(
+            reader, rows, window, stretch, plan.judgement, progress=_counted(progress), workers=plan.limits.threads
+        )
         previous = store.frame("judgement/previous_ranking", as_of=until)
         decided = triage.decide(measured.rows, rows, plan.judgement, previous if len(previous) else None)
         run_id = _save(store, plan, measured, decided, until, since, version, slot, time.perf_counter() - began)

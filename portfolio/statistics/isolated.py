@@ -21,6 +21,7 @@ FORGIVING = 1.92
 DF_SHARE = 0.6
 "Degrees of freedom of the reference t per subgroup: the scale comes from two quantiles."
 FLAG_P = 0.01
+FLATTEST = 1e-6
 
 
 @dataclass(frozen=True)
@@ -56,14 +57,14 @@ def isolated_extremes(values: Floats, start: Ints, subgroup_start: Ints, of: Int
     with np.errstate(divide="ignore", invalid="ignore"):
         skew = np.log((high - middle) / (middle - low)) / Z95
     error = FORGIVING / np.sqrt(np.maximum(n, 1))
-    owner = np.repeat(np.arange(len(n)), n)
+    deviation = values - np.repeat(middle, n)
     group_owner = np.repeat(np.arange(len(m)), m)
     df = np.maximum(DF_SHARE * m, 1)
     # All three maps share m and df, so the largest p belongs to the smallest z.
     smallest = np.full(int(of[-1]), np.inf)
     farthest = np.full(len(m), np.inf)
     for shift in (-1, 0, 1):
-        mapped = _mapped(values, owner, skew + shift * error, middle, middle - low, high - middle)
+        mapped = _mapped(deviation, n, skew + shift * error, middle - low, high - middle)
         location = ragged.means(mapped, subgroup_start)
         lower, centre, upper = quantiles(location, of, (0.1, 0.5, 0.9)).T
         scale = (upper - lower) / 2.563
@@ -81,16 +82,15 @@ def isolated_extremes(values: Floats, start: Ints, subgroup_start: Ints, of: Int
     return Extremes(p=p, of=group_owner[flagged], index=flagged)
 
 
-def _mapped(values: Floats, owner: Ints, skew: Floats, middle: Floats, below: Floats, above: Floats) -> Floats:
-    """Values mapped so that a shifted lognormal of this skewness becomes normal with unit scale."""
+def _mapped(deviation: Floats, n: Ints, skew: Floats, below: Floats, above: Floats) -> Floats:
+    """Deviations from the median mapped so that a shifted lognormal of this skewness becomes normal with unit scale."""
     sign = np.where(skew >= 0, 1.0, -1.0)
-    size = np.abs(skew)
-    h = np.where(skew >= 0, above, below)
-    flat = size < 1e-6
+    size = np.maximum(np.abs(skew), FLATTEST)  # in the limit the map is linear
     with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
-        b = np.where(flat, 0.0, np.expm1(Z95 * size) / h)
-        linear = np.where(flat, Z95 / h, 0.0)
-        gain = np.where(flat, 0.0, sign / np.where(flat, 1.0, size))
-        deviation = values - middle[owner]
-        inner = np.maximum(1 + (b * sign)[owner] * deviation, 1e-9)
-        return np.where(flat[owner], linear[owner] * deviation, gain[owner] * np.log(inner))
+        slope = sign * np.expm1(Z95 * size) / np.where(skew >= 0, above, below)
+        inner = deviation * np.repeat(slope, n)
+        inner += 1
+        np.maximum(inner, 1e-9, out=inner)
+        np.log(inner, out=inner)
+        inner *= np.repeat(sign / size, n)
+    return inner
