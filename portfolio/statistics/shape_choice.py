@@ -34,7 +34,7 @@ MANY = 1000
 FEWEST = 8
 LIGHT_SKEW = 0.5
 PLAIN = 4.0
-"A folded normal whose mean lies so many sigmas above 0 is the normal."
+"A folded normal whose mean lies so many sigmas above its bound is the normal."
 BLOCK = 100_000
 "Values fitted at once: arrays of this length stay in the processor's cache."
 SPREAD = ndtr(np.array([-3.0, 0.0, 3.0]))
@@ -206,13 +206,12 @@ class _Values:
 def _judged(values: _Values, declared: NDArray[np.object_]) -> Shapes:
     x, y = values.plain, values.from_bound()
     count = len(x.n)
-    smallest = np.minimum.reduceat(y.values, y.start[:-1])
-    with np.errstate(divide="ignore", invalid="ignore"):
-        possible = _possible(smallest, y.mean / y.sigma)
     allowed = np.ones((count, len(FAMILIES)), dtype=bool)
     for word in set(declared.tolist()) - {""}:
         group = np.isin(FAMILIES, TYPES.get(word, (word,)))
         allowed[declared == word] = group
+    smallest = np.minimum.reduceat(y.values, y.start[:-1])
+    possible = _possible(smallest, y.mean / y.sigma, allowed[:, NUMBER["normal"]])
     asked = allowed.copy()
     asked[allowed[:, NUMBER["normal"]], NUMBER["student t"]] = True
 
@@ -272,12 +271,12 @@ def _judged(values: _Values, declared: NDArray[np.object_]) -> Shapes:
     )
 
 
-def _possible(smallest: Floats, ratio: Floats) -> Bools:
-    """Which families the values allow, (R, F). The folded normal far above its bound is the normal once more."""
+def _possible(smallest: Floats, ratio: Floats, beside_normal: Bools) -> Bools:
+    """Which families the values allow, (R, F). The folded normal far above its bound is no second normal beside it."""
     out = np.ones((len(smallest), len(FAMILIES)), dtype=bool)
     out[:, BOUNDED] = (smallest > 0)[:, None]
     out[:, NUMBER["half-normal"]] = smallest >= 0
-    out[:, NUMBER["folded normal"]] = (smallest >= 0) & (ratio < PLAIN)
+    out[:, NUMBER["folded normal"]] = (smallest >= 0) & (~beside_normal | (ratio < PLAIN))
     return out
 
 

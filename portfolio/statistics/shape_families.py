@@ -105,12 +105,14 @@ def _folded_quantile(p: Floats, ratio: Floats) -> Floats:
     """Quantile of |N(ratio, 1)| by Newton steps from below: both starts are lower bounds of the quantile."""
     p, ratio = np.broadcast_arrays(p, ratio)
     y = np.maximum(np.maximum(ratio + ndtri(p), ndtri((1 + p) / 2)), 1e-300)
+    moving = np.ones(y.shape, dtype=bool)
     with np.errstate(invalid="ignore", divide="ignore"):
         for _ in range(FOLDED_STEPS):
             gap = ndtr(y - ratio) - ndtr(-y - ratio) - p
             density = (np.exp(-((y - ratio) ** 2) / 2) + np.exp(-((y + ratio) ** 2) / 2)) / np.sqrt(2 * np.pi)
             step = np.clip(-gap / density, -0.5 * y, 0.5)
-            y = y + step
-            if not (np.abs(step) > FOLDED_NEAR * y).any():
+            y = np.where(moving, y + step, y)
+            moving &= np.abs(step) > FOLDED_NEAR * y
+            if not moving.any():
                 break
     return y

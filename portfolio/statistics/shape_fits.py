@@ -18,6 +18,9 @@ from portfolio.statistics.ragged import Bools, Floats, Ints
 LOG_2PI = float(np.log(2 * np.pi))
 STEPS = 100
 NEAR = 1e-9
+"Share of a parameter to which it is found. What has arrived stays, so that no result depends on its neighbours."
+LEFT = 1e-7
+"Log-likelihood that Student t may be short of its maximum."
 FEWEST_FREEDOM, MOST_FREEDOM = 2.0, 500.0
 "Degrees of freedom of Student t that are searched; above the upper end the normal is taken."
 SMOOTH = 40.0
@@ -131,14 +134,16 @@ def gamma_shape(gap: Floats) -> Floats:
     """Shape k with ln k - digamma(k) = gap > 0, by Newton on 1 / k (Choi & Wette 1969; start Minka 2002, from memory)."""
     gap = np.maximum(gap, 1e-300)
     k = (3 - gap + np.sqrt((gap - 3) ** 2 + 24 * gap)) / (12 * gap)
+    moving = np.ones(k.shape, dtype=bool)
     for _ in range(STEPS):
         big = k > 1e6
         safe = np.where(big, 1.0, k)
         value = np.where(big, 0.5 / k + 1 / (12 * k**2), np.log(safe) - psi(safe))
         slope = np.where(big, 0.5 / k**2, polygamma(1, safe) - 1 / safe)
         step = np.clip((value - gap) / (slope * k), -1, 1)
-        k = k * np.exp(step)
-        if not (np.abs(step) > NEAR).any():
+        k = np.where(moving, k * np.exp(step), k)
+        moving &= np.abs(step) > NEAR
+        if not moving.any():
             break
     return k
 
@@ -155,7 +160,7 @@ def _weibull(sample: Sample) -> Fit:
     mean = sample.mean_log - largest
     sigma = np.sqrt(np.maximum(sample.average(z * z) - mean**2, 1e-300))
     k = np.pi / np.sqrt(6) / sigma
-    first = np.ones_like(k)
+    moving = np.ones(len(k), dtype=bool)
     for _ in range(STEPS):
         weight = np.exp(z * sample.spread(k))
         zero = sample.average(weight)
@@ -164,10 +169,10 @@ def _weibull(sample: Sample) -> Fit:
         weight *= z
         second = sample.average(weight) / zero - first**2
         step = -(first - 1 / k - mean) / ((second + 1 / k**2) * k)
-        step = np.clip(step, -1, 1)
-        if not (np.abs(step) > NEAR).any():
+        k = np.where(moving, k * np.exp(np.clip(step, -1, 1)), k)
+        moving &= np.abs(step) > NEAR
+        if not moving.any():
             break
-        k = k * np.exp(step)
     zero = sample.average(np.exp(z * sample.spread(k)))
     level = np.log(sample.mean)
     scale = np.exp(level + largest + np.log(zero) / k)
@@ -216,14 +221,15 @@ def _ridge(u: Floats, sample: Sample) -> Floats:
     inside = at_low > 0
     at_high = _folded_score(u, sample, high)
     r, last = np.where(inside, high, 0.0), np.zeros(len(low))
+    moving = inside
     for _ in range(STEPS):
         gap = at_high - at_low
-        inside &= gap != 0  # both ends on the root already
-        trial = np.where(inside, high - at_high * (high - low) / np.where(inside, gap, 1.0), r)
-        trial = np.where(inside, np.clip(trial, low, high), r)
-        done = ~inside | (np.abs(trial - r) <= 1e-8)
+        moving = moving & (gap != 0)  # else both ends are on the root already
+        trial = high - at_high * (high - low) / np.where(moving, gap, 1.0)
+        trial = np.where(moving, np.clip(trial, low, high), r)
+        moving = moving & (np.abs(trial - r) > 1e-8)
         r = trial
-        if done.all():
+        if not moving.any():
             break
         score = _folded_score(u, sample, np.maximum(trial, 1e-6))
         left = score >= 0
@@ -266,6 +272,7 @@ def _score_student(sample: Sample) -> tuple[tuple[Floats, Floats, Floats], Float
     log_scale = np.log(sample.sigma * np.sqrt((nu - 2) / nu))
     share = 1 / nu
     lowest, highest = 1 / MOST_FREEDOM, 1 / FEWEST_FREEDOM
+    moving = np.ones(len(nu), dtype=bool)
     for _ in range(STEPS):
         nu = 1 / share
         z = (sample.deviations - sample.spread(shift)) / sample.spread(np.exp(log_scale))
@@ -289,12 +296,12 @@ def _score_student(sample: Sample) -> tuple[tuple[Floats, Floats, Floats], Float
         to_share = np.where(stuck, 0.0, np.clip(to_share, -0.15, 0.15))
         to_scale = np.where(stuck, spread_score / i_scale, np.clip(to_scale, -1, 1))
         to_shift = first * np.exp(log_scale) * (nu + 3) / (nu + 1)
-        left = sample.n * np.abs(to_scale * spread_score + to_share * third + first**2)
-        if not (left > 1e-7).any():
+        moving &= sample.n * np.abs(to_scale * spread_score + to_share * third + first**2) > LEFT
+        if not moving.any():
             break
-        share = np.clip(share + to_share, lowest, highest)
-        log_scale = log_scale + to_scale
-        shift = shift + to_shift
+        share = np.where(moving, np.clip(share + to_share, lowest, highest), share)
+        log_scale = np.where(moving, log_scale + to_scale, log_scale)
+        shift = np.where(moving, shift + to_shift, shift)
     nu, scale = 1 / share, np.exp(log_scale)
     z = (sample.deviations - sample.spread(shift)) / sample.spread(scale)
     logs = sample.average(np.log1p(z * z * sample.spread(share)))
