@@ -38,7 +38,7 @@ def context(data: PageData, rows: list[dict[str, Any]], n: Numbers) -> dict[str,
             for route in ROUTES
             if (number := sum(row["route"] == route for row in rows))
         ],
-        "listed": n.count(len(listed)),
+        "listed": n.count(len(listed)) if listed else "",
         "expected_short": _expected_short(listed, n),
         "not_judged": page_alarms.not_judged(rows, n),
         "next": [line(row, n) for row in rest],

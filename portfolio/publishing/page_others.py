@@ -49,6 +49,7 @@ def sites(compared: dict[str, Any], n: Numbers) -> dict[str, Any]:
             "Share of judged characteristics that are predictable and fit the tolerance, by site, with 95 % intervals",
             "s-",
             n.decimal,
+            500,
         )
     families = [
         {

@@ -97,8 +97,8 @@ def cautions(row: Row, n: Numbers = PLAIN) -> list[str]:
     if proposed(row) and not _cautious_reaches(row):
         low = "" if missing(row["cpk_centered_low"]) else f" (Cpk {n.index(row['cpk_centered_low'])})"
         out.append(
-            f"It may fall short: chance of reaching {n.index(row['target_cpk'])} {n.chance(row['chance_centered'])}; "
-            f"cautiously read it is missed{low}."
+            f"It may fall short: the chance of reaching {n.index(row['target_cpk'])} is "
+            f"{n.chance(row['chance_centered'])}; cautiously read, it is missed{low}."
         )
     if row["adjustable"] != "yes":
         out.append(_who(row))
